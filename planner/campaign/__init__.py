@@ -1,0 +1,1 @@
+"""What the user wrote: files to frozen, validated records."""

@@ -1,0 +1,1 @@
+"""What a look costs and how well it measures."""

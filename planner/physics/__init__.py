@@ -1,0 +1,1 @@
+"""Formulas: arrays in, arrays out, numpy only."""

@@ -1,0 +1,1 @@
+"""Belief, the one observation model and the one error model, and the forecast made from them."""

@@ -1,0 +1,1 @@
+"""From slots to a checked plan."""

@@ -1,0 +1,161 @@
+"""Quantities a goal may ask for, as functions of a target's coordinates.
+
+Each takes (model, feature, theta (N, P)) and returns (N,) in the unit of the goal. ``gradient`` is its derivative,
+of the logarithm for percent goals.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from planner.campaign.records import LearnGoal
+from planner.physics import expansion, jet
+from planner.prediction.knots import KnotModel, PairModel
+from planner.prediction.model import STEP, FeatureModel, TargetModel
+from planner.prediction.rings import RingModel
+from planner.records import Floats
+from planner.units import YEAR_DAYS
+
+Quantity = Callable[[TargetModel, FeatureModel, Floats], Floats]
+
+
+def _ring(read: Callable[[RingModel, Floats], Floats]) -> Quantity:
+    def value(model: TargetModel, feature: FeatureModel, theta: Floats) -> Floats:
+        assert isinstance(feature, RingModel)
+        return read(feature, theta)
+
+    return value
+
+
+def _knot(read: Callable[[TargetModel, KnotModel, Floats], Floats]) -> Quantity:
+    def value(model: TargetModel, feature: FeatureModel, theta: Floats) -> Floats:
+        assert isinstance(feature, KnotModel)
+        return read(model, feature, theta)
+
+    return value
+
+
+def _pair(read: Callable[[TargetModel, PairModel, Floats], Floats]) -> Quantity:
+    def value(model: TargetModel, feature: FeatureModel, theta: Floats) -> Floats:
+        assert isinstance(feature, PairModel)
+        return read(model, feature, theta)
+
+    return value
+
+
+def _speed(feature: KnotModel, theta: Floats) -> Floats:
+    return np.hypot(theta[..., feature.velocity[0]], theta[..., feature.velocity[1]])
+
+
+def _position_angle(feature: KnotModel, theta: Floats) -> Floats:
+    """Within 180 degrees of the prior's median, so that no belief is cut in two at the wrap."""
+    home = feature.record.motion.pa_deg.median()
+    raw = np.degrees(np.arctan2(theta[..., feature.velocity[0]], theta[..., feature.velocity[1]]))
+    return home + (raw - home + 180.0) % 360.0 - 180.0
+
+
+def _apparent_c(model: TargetModel, feature: KnotModel, theta: Floats) -> Floats:
+    speed = _speed(feature, theta)
+    if model.target.redshift is None:
+        assert model.distance is not None
+        return jet.transverse_speed_c(speed / YEAR_DAYS, model.distance.value(theta)[..., 0] / 1e3)
+    return speed * _speed_per_mas_yr(model)
+
+
+def _speed_per_mas_yr(model: TargetModel) -> float:
+    assert model.target.redshift is not None
+    return float(expansion.speed_c(1.0, model.target.redshift, cosmology_of(model)))
+
+
+def cosmology_of(model: TargetModel) -> object:
+    """Return the astropy cosmology of a target's numbers (flat unless omega_lambda is given)."""
+    from astropy.cosmology import FlatLambdaCDM, LambdaCDM
+
+    c = model.target.cosmology
+    if c.omega_lambda is None:
+        return FlatLambdaCDM(H0=c.h0_km_s_mpc, Om0=c.omega_matter)
+    return LambdaCDM(H0=c.h0_km_s_mpc, Om0=c.omega_matter, Ode0=c.omega_lambda)
+
+
+def _rates(feature: PairModel, theta: Floats) -> tuple[Floats, Floats]:
+    return feature.approaching.value(theta)[..., 0], feature.receding.value(theta)[..., 0]
+
+
+def _two_sided(model: TargetModel, feature: PairModel, theta: Floats) -> jet.TwoSided:
+    assert model.distance is not None
+    near, far = _rates(feature, theta)
+    return jet.two_sided(near, far, model.distance.value(theta)[..., 0] / 1e3)
+
+
+def _beta_cos(feature: PairModel, theta: Floats) -> Floats:
+    near, far = _rates(feature, theta)
+    return (near - far) / (near + far)
+
+
+def _distance(model: TargetModel, feature: FeatureModel, theta: Floats) -> Floats:
+    assert model.distance is not None
+    return model.distance.value(theta)[..., 0]
+
+
+QUANTITIES: dict[tuple[str, str], Quantity] = {
+    ("ring", "depth_pc"): _ring(lambda f, th: f.depth.value(th)[..., 0]),
+    ("ring", "depth_over_distance2"): _ring(lambda f, th: (f.depth.value(th) / f.distance.value(th) ** 2)[..., 0]),
+    ("ring", "distance_pc"): _distance,
+    ("ring", "slope_east"): _ring(lambda f, th: f.slope_east.value(th)[..., 0]),
+    ("ring", "slope_north"): _ring(lambda f, th: f.slope_north.value(th)[..., 0]),
+    ("ring", "tilt_deg"): _ring(
+        lambda f, th: np.degrees(np.arctan(np.hypot(f.slope_east.value(th), f.slope_north.value(th))))[..., 0]
+    ),
+    ("knot", "apparent_speed_c"): _knot(_apparent_c),
+    ("knot", "speed_mas_yr"): _knot(lambda m, f, th: _speed(f, th)),
+    ("knot", "pa_deg"): _knot(lambda m, f, th: _position_angle(f, th)),
+    ("knot", "core_crossing"): _knot(lambda m, f, th: f.crossing_mjd(th)[..., 0]),
+    ("knot", "min_lorentz_factor"): _knot(lambda m, f, th: jet.least_lorentz_factor(_apparent_c(m, f, th))),
+    ("pair", "beta_cos"): _pair(lambda m, f, th: _beta_cos(f, th)),
+    ("pair", "approaching_mas_d"): _pair(lambda m, f, th: _rates(f, th)[0]),
+    ("pair", "receding_mas_d"): _pair(lambda m, f, th: _rates(f, th)[1]),
+    ("pair", "ejection"): _pair(lambda m, f, th: f.ejection_mjd(th)[..., 0]),
+    ("pair", "pa_deg"): _pair(lambda m, f, th: f.pa.value(th)[..., 0]),
+    ("pair", "largest_distance_kpc"): _pair(
+        lambda m, f, th: np.asarray(jet.two_sided(*_rates(f, th), 1.0).largest_distance_kpc)
+    ),
+    ("pair", "angle_deg"): _pair(lambda m, f, th: np.asarray(_two_sided(m, f, th).angle_deg)),
+    ("pair", "beta"): _pair(lambda m, f, th: np.asarray(_two_sided(m, f, th).beta)),
+}
+
+
+@dataclass(frozen=True)
+class Wanted:
+    """A learn goal turned into numbers: its value, whether its logarithm counts, and one standard deviation."""
+
+    feature: FeatureModel
+    goal: LearnGoal
+    of_logarithm: bool
+    sigma: float  # in the logarithm (0.02 for 2 %) or in the quantity's unit
+
+    def value(self, model: TargetModel, theta: Floats) -> Floats:
+        """Value (N,) of the quantity, or of its logarithm for a percent goal."""
+        value = QUANTITIES[(self.feature.kind, self.goal.learn)](model, self.feature, theta)
+        if not self.of_logarithm:
+            return value
+        with np.errstate(invalid="ignore", divide="ignore"):
+            return np.log(value)
+
+    def gradient(self, model: TargetModel, theta: Floats) -> Floats:
+        """Derivative (N, P) of ``value`` by central differences."""
+        out = np.zeros(theta.shape)
+        for j in range(theta.shape[-1]):
+            step = STEP * model.sigma[j]
+            shift = np.zeros(theta.shape[-1])
+            shift[j] = step
+            out[..., j] = (self.value(model, theta + shift) - self.value(model, theta - shift)) / (2 * step)
+        return out
+
+
+def wanted(model: TargetModel, feature: FeatureModel, goal: LearnGoal) -> Wanted:
+    """Turn a goal as read into numbers; percent goals count the logarithm."""
+    percent = goal.to.unit == "%"
+    return Wanted(feature, goal, percent, goal.to.value / 100.0 if percent else goal.to.value)

@@ -73,7 +73,9 @@ class Layout:
         self.size += len(block.names)
         return tuple(range(first, self.size))
 
-    def add_law(self, name: str, unit: str, law: Law, *, why: str = "the target's file", nuisance: bool = False) -> Number:
+    def add_law(
+        self, name: str, unit: str, law: Law, *, why: str = "the target's file", nuisance: bool = False
+    ) -> Number:
         """Add one law; a fixed one becomes a constant."""
         if isinstance(law, Fixed):
             return Number(None, law.positive, law.value)

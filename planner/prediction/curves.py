@@ -86,7 +86,11 @@ def feature_bands(feature: FeatureModel, theta: Floats, mjd: Floats) -> list[Ban
         state = feature.state(theta, mjd)
         rows = [
             ("radius", "arcsec", np.where(state.exists, state.mean_radius_arcsec, np.nan)),
-            ("surface brightness", f"{feature.light_filter} mag/arcsec2", np.where(state.exists, state.mag_arcsec2, np.nan)),
+            (
+                "surface brightness",
+                f"{feature.light_filter} mag/arcsec2",
+                np.where(state.exists, state.mag_arcsec2, np.nan),
+            ),
         ]
     else:
         rows = []

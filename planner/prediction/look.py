@@ -13,7 +13,7 @@ import numpy as np
 
 from planner.campaign.records import CameraSetup, Receiver, SetupRef, Site
 from planner.instruments import camera, interferometer
-from planner.prediction.knots import KnotModel, PairModel, SpotState
+from planner.prediction.knots import SpotState
 from planner.prediction.model import TargetModel
 from planner.prediction.rings import RingModel, RingState
 from planner.records import Bools, Floats, Track
@@ -172,9 +172,7 @@ def _ring_errors(
     return sigma, ~stopped, snr, blocks
 
 
-def array_errors(
-    model: TargetModel, theta: Floats, mjd: Floats, receiver: Receiver, track: Track
-) -> LookErrors:
+def array_errors(model: TargetModel, theta: Floats, mjd: Floats, receiver: Receiver, track: Track) -> LookErrors:
     """Error model of array looks at every knot in the field; rings are not measured by arrays.
 
     Position errors along the beam's axes (beam / 2 S/N, size, floor), variance raised where the knot blends with
@@ -220,7 +218,9 @@ def _spot_errors(
         )
         beams = np.nan_to_num(spot.separation_mas) / cut
         # a knot larger than the beam spreads its flux over several beams: its peak is what counts
-        peak = np.nan_to_num(spot.flux_mjy) / (1.0 + (size_mas / np.sqrt(track.beam_major_mas * track.beam_minor_mas)) ** 2)
+        peak = np.nan_to_num(spot.flux_mjy) / (
+            1.0 + (size_mas / np.sqrt(track.beam_major_mas * track.beam_minor_mas)) ** 2
+        )
         snr = peak / noise_mjy
         masks = {
             "not yet ejected": ~spot.exists,

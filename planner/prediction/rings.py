@@ -158,7 +158,11 @@ class RingModel:
         """The filter the brightness is anchored in."""
         assert self.target.outburst is not None
         seen = self.record.brightness.seen
-        return seen.filter if seen else ("V" if "V" in self.target.outburst.peak_mag else min(self.target.outburst.peak_mag))
+        return (
+            seen.filter
+            if seen
+            else ("V" if "V" in self.target.outburst.peak_mag else min(self.target.outburst.peak_mag))
+        )
 
     def _mag(self, theta: Floats, delay: Floats, depth: Floats) -> Floats:
         """Surface brightness in the anchor's filter: anchored on what was seen, changed as the dust model says."""

@@ -3,19 +3,29 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from typing import Annotated, Any, ClassVar
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, model_validator
+from pydantic import (
+    AfterValidator,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    ValidationError,
+    WithJsonSchema,
+    model_validator,
+)
+
+from planner.campaign.base import Record, fault, moved, raise_faults, unknown
 
 Array = NDArray[np.float64]
 
 
-class Law(BaseModel):
-    """One number's prior. In YAML: a bare number (fixed) or one key, e.g. ``{normal: {mean: 3, sigma: 1}}``."""
+class Law(Record):
+    """One number's prior. In YAML: a bare number (fixed), or e.g. ``{normal: {mean: 3, sigma: 1}}``."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False)
     name: ClassVar[str] = ""
 
     def quantile(self, share: ArrayLike) -> Array:
@@ -58,16 +68,20 @@ class Fixed(Law):
     value: float
 
     def quantile(self, share: ArrayLike) -> Array:
+        """Value at each cumulative ``share``; same shape."""
         return np.full(np.shape(share), self.value, dtype=float)
 
     @property
     def support(self) -> tuple[float, float]:
+        """Lowest and highest possible value."""
         return self.value, self.value
 
     def widened(self, factor: float) -> Law:
+        """Return the law with its width multiplied by ``factor``."""
         return self
 
     def words(self) -> str:
+        """One short phrase for people."""
         return f"{self.value:g} (fixed)"
 
 
@@ -76,27 +90,29 @@ class Normal(Law):
 
     name: ClassVar[str] = "normal"
     mean: float
-    sigma: float
-
-    @model_validator(mode="after")
-    def _check(self) -> Normal:
-        if self.sigma <= 0:
-            raise ValueError(f"sigma: got {self.sigma:g}, needs a value above 0; use a bare number if it is known")
-        return self
+    sigma: float = Field(gt=0)
 
     def quantile(self, share: ArrayLike) -> Array:
+        """Value at each cumulative ``share``; same shape."""
         from scipy.special import ndtri
 
         return self.mean + self.sigma * ndtri(np.asarray(share, dtype=float))
 
     @property
     def support(self) -> tuple[float, float]:
+        """Lowest and highest possible value."""
         return -math.inf, math.inf
 
+    def median(self) -> float:
+        """The mean itself, known without loading the normal law's inverse."""
+        return self.mean
+
     def widened(self, factor: float) -> Law:
+        """Return the law with its width multiplied by ``factor``."""
         return Normal(mean=self.mean, sigma=self.sigma * factor)
 
     def words(self) -> str:
+        """One short phrase for people."""
         return f"{self.mean:g} ± {self.sigma:g}"
 
 
@@ -104,37 +120,32 @@ class Lognormal(Law):
     """Lognormal law; ``sigma_fraction`` is the standard deviation of the natural logarithm."""
 
     name: ClassVar[str] = "lognormal"
-    median_value: float
-    sigma_fraction: float
-
-    @model_validator(mode="before")
-    @classmethod
-    def _rename(cls, data: Any) -> Any:
-        if isinstance(data, dict) and "median" in data:
-            data = {("median_value" if k == "median" else k): v for k, v in data.items()}
-        return data
-
-    @model_validator(mode="after")
-    def _check(self) -> Lognormal:
-        if self.median_value <= 0:
-            raise ValueError(f"median: got {self.median_value:g}, needs a value above 0")
-        if self.sigma_fraction <= 0:
-            raise ValueError(f"sigma_fraction: got {self.sigma_fraction:g}, needs a value above 0")
-        return self
+    # ``median`` in files; the attribute's name leaves the method ``median()`` to all laws alike.
+    median_value: float = Field(alias="median", gt=0)
+    sigma_fraction: float = Field(gt=0)
+    model_config = ConfigDict(populate_by_name=True)
 
     def quantile(self, share: ArrayLike) -> Array:
+        """Value at each cumulative ``share``; same shape."""
         from scipy.special import ndtri
 
         return self.median_value * np.exp(self.sigma_fraction * ndtri(np.asarray(share, dtype=float)))
 
     @property
     def support(self) -> tuple[float, float]:
+        """Lowest and highest possible value."""
         return 0.0, math.inf
 
+    def median(self) -> float:
+        """The stated median itself."""
+        return self.median_value
+
     def widened(self, factor: float) -> Law:
+        """Return the law with its width multiplied by ``factor``."""
         return Lognormal(median_value=self.median_value, sigma_fraction=self.sigma_fraction * factor)
 
     def words(self) -> str:
+        """One short phrase for people."""
         return f"{self.median_value:g} ± {100 * self.sigma_fraction:.3g} % (lognormal)"
 
 
@@ -146,16 +157,18 @@ class Uniform(Law):
     high: float
 
     @model_validator(mode="after")
-    def _check(self) -> Uniform:
+    def _order(self) -> Uniform:
         if not self.low < self.high:
             raise ValueError(f"low {self.low:g} must be below high {self.high:g}")
         return self
 
     def quantile(self, share: ArrayLike) -> Array:
+        """Value at each cumulative ``share``; same shape."""
         return self.low + (self.high - self.low) * np.asarray(share, dtype=float)
 
     @property
     def support(self) -> tuple[float, float]:
+        """Lowest and highest possible value."""
         return self.low, self.high
 
     def widened(self, factor: float) -> Law:
@@ -168,6 +181,7 @@ class Uniform(Law):
         return Uniform(low=middle - half, high=middle + half)
 
     def words(self) -> str:
+        """One short phrase for people."""
         return f"{self.low:g} to {self.high:g}"
 
 
@@ -175,20 +189,16 @@ class TruncatedNormal(Law):
     """Normal law cut off outside [low, high]."""
 
     name: ClassVar[str] = "truncated_normal"
-    mean: float
-    sigma: float
+    mean: float = Field(allow_inf_nan=False)
+    sigma: float = Field(gt=0, allow_inf_nan=False)
     low: float = -math.inf
     high: float = math.inf
-    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=True)
+    model_config = ConfigDict(allow_inf_nan=True)
 
     @model_validator(mode="after")
-    def _check(self) -> TruncatedNormal:
-        if not (math.isfinite(self.mean) and math.isfinite(self.sigma)):
-            raise ValueError("mean and sigma must be finite")
+    def _order(self) -> TruncatedNormal:
         if math.isnan(self.low) or math.isnan(self.high) or not self.low < self.high:
             raise ValueError(f"low {self.low:g} must be below high {self.high:g}")
-        if self.sigma <= 0:
-            raise ValueError(f"sigma: got {self.sigma:g}, needs a value above 0")
         if self._mass() < 1e-9:
             raise ValueError("the limits leave nothing of the law: mean and sigma put all of it outside [low, high]")
         return self
@@ -204,6 +214,7 @@ class TruncatedNormal(Law):
         return b - a
 
     def quantile(self, share: ArrayLike) -> Array:
+        """Value at each cumulative ``share``; same shape."""
         from scipy.special import ndtri
 
         a, b = self._ends()
@@ -212,12 +223,15 @@ class TruncatedNormal(Law):
 
     @property
     def support(self) -> tuple[float, float]:
+        """Lowest and highest possible value."""
         return self.low, self.high
 
     def widened(self, factor: float) -> Law:
+        """Return the law with its width multiplied by ``factor``."""
         return TruncatedNormal(mean=self.mean, sigma=self.sigma * factor, low=self.low, high=self.high)
 
     def words(self) -> str:
+        """One short phrase for people."""
         return f"{self.mean:g} ± {self.sigma:g} within [{self.low:g}, {self.high:g}]"
 
 
@@ -228,22 +242,34 @@ def read_law(data: Any) -> Law:
     """Turn a YAML value into a law: a number is fixed; else a mapping with one key, the law's name."""
     if isinstance(data, Law):
         return data
-    if isinstance(data, bool) or data is None or isinstance(data, str):
-        raise ValueError(f"got {data!r}; give a number, or one law of: {', '.join(LAWS)}")
-    if isinstance(data, (int, float)):
-        return Fixed(value=float(data))
-    if isinstance(data, dict) and len(data) == 1:
-        (name, body), *_ = data.items()
-        if name in LAWS:
-            if name == "fixed" and isinstance(body, (int, float)):
-                body = {"value": body}
-            return LAWS[name].model_validate(body)
-        from planner.errors import nearest
+    if isinstance(data, (int, float)) and not isinstance(data, bool):
+        try:
+            return Fixed(value=float(data))
+        except ValidationError as error:
+            raise_faults("Law", moved(error, (), drop=1))
+    if not isinstance(data, Mapping) or len(data) != 1:
+        shown = "nothing" if data is None else repr(data)
+        raise ValueError(f"got {shown}; give a number, or one law of: {', '.join(LAWS)}")
+    ((name, body),) = data.items()
+    if name not in LAWS:
+        raise_faults("Law", [unknown((), str(name), LAWS, "law")])
+    if name == "fixed" and not isinstance(body, Mapping):
+        body = {"value": body}
+    return _read_body(name, body)
 
-        near = nearest(str(name), LAWS)
-        hint = f"; did you mean {near!r}?" if near else ""
-        raise ValueError(f"unknown law {name!r}{hint} (allowed: a number, {', '.join(LAWS)})")
-    raise ValueError(f"got {data!r}; give a number, or one law of: {', '.join(LAWS)}")
+
+def _read_body(name: str, body: Any) -> Law:
+    law = LAWS[name]
+    if not isinstance(body, Mapping):
+        needs = ", ".join(law.permitted_keys())
+        raise_faults("Law", [fault((name,), f"got {body!r}, needs a mapping of: {needs}", body)])
+    odd = [key for key in body if key not in law.permitted_keys()]
+    raise_faults("Law", [unknown((name, k), str(k), law.permitted_keys(), "key", "unknown_key") for k in odd])
+    try:
+        return law.model_validate(body)
+    except ValidationError as error:
+        raise_faults("Law", moved(error, (name,)))
+        raise
 
 
 def _above_zero(law: Law) -> Law:
@@ -254,5 +280,19 @@ def _above_zero(law: Law) -> Law:
     return law
 
 
-AnyLaw = Annotated[Law, BeforeValidator(read_law)]
-PositiveLaw = Annotated[Law, BeforeValidator(read_law), AfterValidator(_above_zero)]
+def _schema() -> dict[str, Any]:
+    """JSON Schema of what a user may write for a law."""
+    one = [
+        {
+            "type": "object",
+            "properties": {name: {"type": "object"}},
+            "required": [name],
+            "additionalProperties": False,
+        }
+        for name in LAWS
+    ]
+    return {"anyOf": [{"type": "number"}, *one], "description": "a number, or one prior law"}
+
+
+AnyLaw = Annotated[Law, BeforeValidator(read_law), WithJsonSchema(_schema())]
+PositiveLaw = Annotated[Law, BeforeValidator(read_law), AfterValidator(_above_zero), WithJsonSchema(_schema())]

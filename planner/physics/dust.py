@@ -142,7 +142,8 @@ def ring_mag_arcsec2(
     r = np.asarray(depth_pc, dtype=np.float64) + C_PC_PER_DAY * np.asarray(delay_days, dtype=np.float64)
     big = checked("distance_pc", distance_pc, above=0.0)
     with np.errstate(divide="ignore", invalid="ignore"):
-        return plain(peak - 2.5 * np.log10(share * (big / r) ** 2 / SR_ARCSEC2))
+        # logarithms one by one: next to the source D/r can overflow
+        return plain(peak - 2.5 * np.log10(share / SR_ARCSEC2) - 5.0 * (np.log10(big) - np.log10(r)))
 
 
 def thin_limit_pc(duration_days: ArrayLike, depth_pc: ArrayLike, delay_days: ArrayLike) -> Floats:
@@ -176,12 +177,10 @@ def whole_ring_mag(
     share = np.asarray(scattered_fraction(extinction_mag, albedo, g, depth_pc, delay_days))
     r = np.asarray(depth_pc, dtype=np.float64) + C_PC_PER_DAY * np.asarray(delay_days, dtype=np.float64)
     with np.errstate(divide="ignore", invalid="ignore"):
-        return plain(peak - 2.5 * np.log10(2.0 * np.pi * tau * share / r))
+        return plain(peak - 2.5 * (np.log10(2.0 * np.pi * tau * share) - np.log10(r)))
 
 
-def seeing_limited_mag_arcsec2(
-    ring_mag: ArrayLike, radius_arcsec: ArrayLike, width_arcsec: ArrayLike
-) -> Floats:
+def seeing_limited_mag_arcsec2(ring_mag: ArrayLike, radius_arcsec: ArrayLike, width_arcsec: ArrayLike) -> Floats:
     """Peak surface brightness of a complete ring whose light is spread over a Gaussian of this FWHM.
 
     I = F_ring / (2 pi theta 1.0645 W). For rings narrower than the image is sharp. radius_arcsec and

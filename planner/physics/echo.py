@@ -68,9 +68,7 @@ def sheet_ring(
     stretch = 1.0 + slope**2
     with np.errstate(divide="ignore", invalid="ignore"):
         speed = np.where((z0 == 0.0) & (ct >= 0.0), np.sqrt(stretch), (z0 + ct * stretch) / rho)
-        scattering = np.where(
-            z0 == 0.0, 90.0, 2.0 * np.rad2deg(np.arctan2(np.sqrt(ct), np.sqrt(2.0 * z0 + ct)))
-        )
+        scattering = np.where(z0 == 0.0, 90.0, 2.0 * np.rad2deg(np.arctan2(np.sqrt(ct), np.sqrt(2.0 * z0 + ct))))
     return _ring(rho * scale, east * scale, north * scale, speed, scattering)
 
 
@@ -97,9 +95,7 @@ def sheet_circle(
     return plain(rho * scale), plain(east * scale), plain(north * scale)
 
 
-def _sheet_circle_pc(
-    ct: Floats, z0: Floats, slope_east: Floats, slope_north: Floats
-) -> tuple[Floats, Floats, Floats]:
+def _sheet_circle_pc(ct: Floats, z0: Floats, slope_east: Floats, slope_north: Floats) -> tuple[Floats, Floats, Floats]:
     with np.errstate(invalid="ignore"):
         # sqrt(ct) and not sqrt(ct * ...): a negative delay must give nan even when both factors are negative
         rho = np.sqrt(ct) * np.sqrt(2.0 * z0 + ct * (1.0 + slope_east**2 + slope_north**2))
@@ -267,9 +263,7 @@ def dust_distance_pc(
         return plain(np.where(ct > 0.0, d, np.nan))
 
 
-def source_distance_pc(
-    dust_distance_pc: ArrayLike, radius_arcsec: ArrayLike, delay_days: ArrayLike
-) -> Floats:
+def source_distance_pc(dust_distance_pc: ArrayLike, radius_arcsec: ArrayLike, delay_days: ArrayLike) -> Floats:
     """Distance of a source seen through dust of known distance, from one ring radius.
 
     For small angles 1/D = 1/d - theta^2/(2 ct); here exact. nan where the ring is larger than even a source
@@ -283,9 +277,7 @@ def source_distance_pc(
         return plain(np.where((ct > 0.0) & (below > 0.0) & (above > 0.0), big, np.nan))
 
 
-def age_from_motion_days(
-    radius_arcsec: ArrayLike, motion_arcsec_yr: ArrayLike, distance_pc: ArrayLike
-) -> Floats:
+def age_from_motion_days(radius_arcsec: ArrayLike, motion_arcsec_yr: ArrayLike, distance_pc: ArrayLike) -> Floats:
     """Delay of an untilted sheet's ring from its radius and growth rate at one epoch.
 
     t = (rho/c) / (b + sqrt(b^2 - 1)) with b the speed in c; about radius/(2 rate) when b is large, always
@@ -339,9 +331,7 @@ def why_no_ring(delay_days: float, depth_pc: float, slope: float = 0.0) -> str:
     return ""
 
 
-def _rho_and_ct(
-    radius_arcsec: ArrayLike, delay_days: ArrayLike, distance_pc: ArrayLike
-) -> tuple[Floats, Floats]:
+def _rho_and_ct(radius_arcsec: ArrayLike, delay_days: ArrayLike, distance_pc: ArrayLike) -> tuple[Floats, Floats]:
     scale = checked("distance_pc", distance_pc, above=0.0) / RAD_ARCSEC
     rho = checked("radius_arcsec", radius_arcsec, at_least=0.0) * scale
     return rho, C_PC_PER_DAY * checked("delay_days", delay_days)

@@ -77,9 +77,7 @@ def shell_dust_width_arcsec(
         return plain(ct * da / rho * scale)
 
 
-def screen_outburst_width_arcsec(
-    duration_days: ArrayLike, radius_arcsec: ArrayLike, delay_days: ArrayLike
-) -> Floats:
+def screen_outburst_width_arcsec(duration_days: ArrayLike, radius_arcsec: ArrayLike, delay_days: ArrayLike) -> Floats:
     """Width of a ring on far foreground dust from the length of the outburst: theta tau/(2 t), small angles.
 
     duration_days, radius_arcsec: at least 0; nan for delays at or below 0. Broadcasts. Raises DomainError.
@@ -140,9 +138,7 @@ def separation_days(
     dust = checked("dust_width_arcsec", dust_width_arcsec, at_least=0.0)
     image = checked("image_fwhm_arcsec", image_fwhm_arcsec, at_least=0.0)
     with np.errstate(invalid="ignore"):
-        rate = checked(
-            "abs(motion_arcsec_day)", np.abs(np.asarray(motion_arcsec_day, dtype=np.float64)), above=0.0
-        )
+        rate = checked("abs(motion_arcsec_day)", np.abs(np.asarray(motion_arcsec_day, dtype=np.float64)), above=0.0)
     return plain(np.sqrt(tau**2 + (dust / rate) ** 2 + (image / rate) ** 2))
 
 

@@ -27,9 +27,7 @@ def speed_c(proper_motion_mas_yr: ArrayLike, redshift: ArrayLike, cosmology: Any
     Broadcasts. Raises DomainError (for redshift 0 use ``jet.transverse_speed_c`` with the distance).
     """
     mu = checked("proper_motion_mas_yr", proper_motion_mas_yr)
-    return plain(
-        mu / RAD_MAS * _distance_pc(redshift, cosmology, "comoving_transverse_distance") / C_PC_PER_YEAR
-    )
+    return plain(mu / RAD_MAS * _distance_pc(redshift, cosmology, "comoving_transverse_distance") / C_PC_PER_YEAR)
 
 
 def proper_motion_mas_yr(apparent_c: ArrayLike, redshift: ArrayLike, cosmology: Any) -> Floats:

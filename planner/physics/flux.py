@@ -46,9 +46,7 @@ def power_law_mjy(start_mjy: ArrayLike, ratio: ArrayLike, index: ArrayLike) -> F
     return plain(start * checked("ratio", ratio, above=0.0) ** -checked("index", index))
 
 
-def at_frequency_mjy(
-    flux_mjy: ArrayLike, from_ghz: ArrayLike, to_ghz: ArrayLike, spectral_index: ArrayLike
-) -> Floats:
+def at_frequency_mjy(flux_mjy: ArrayLike, from_ghz: ArrayLike, to_ghz: ArrayLike, spectral_index: ArrayLike) -> Floats:
     """Flux at another frequency (both above 0): S ~ nu^spectral_index. Broadcasts. Raises DomainError."""
     flux = checked("flux_mjy", flux_mjy, at_least=0.0)
     ratio = checked("to_ghz", to_ghz, above=0.0) / checked("from_ghz", from_ghz, above=0.0)
@@ -68,9 +66,7 @@ def boosting(doppler: ArrayLike, spectral_index: ArrayLike, exponent: ArrayLike 
 # ------------------------------------------------------------------ a pair
 
 
-def ratio_equal_separation(
-    beta_cos: ArrayLike, spectral_index: ArrayLike, exponent: ArrayLike = SINGLE_BLOB
-) -> Floats:
+def ratio_equal_separation(beta_cos: ArrayLike, spectral_index: ArrayLike, exponent: ArrayLike = SINGLE_BLOB) -> Floats:
     """Approaching over receding flux when both are equally far from the core (equal intrinsic age).
 
     [(1 + b)/(1 - b)]^(exponent - spectral_index) with b = beta cos(angle), inside -1..1. Broadcasts.
@@ -96,9 +92,7 @@ def ratio_equal_time(
     return plain(_age_ratio(beta_cos) ** (power - checked("fading_index", fading_index)))
 
 
-def beta_cos_of_ratio(
-    ratio: ArrayLike, spectral_index: ArrayLike, exponent: ArrayLike = SINGLE_BLOB
-) -> Floats:
+def beta_cos_of_ratio(ratio: ArrayLike, spectral_index: ArrayLike, exponent: ArrayLike = SINGLE_BLOB) -> Floats:
     """Beta cos(angle) from the flux ratio (above 0) at equal separation; a lower limit gives a lower limit.
 
     exponent - spectral_index must be above 0. Broadcasts. Raises DomainError.

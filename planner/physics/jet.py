@@ -112,7 +112,7 @@ def angles_deg(beta: ArrayLike, apparent_c: ArrayLike) -> tuple[Floats, Floats]:
         short = b - vq
         # a speed computed as gamma beta must find its root: forgive the rounding of one argument
         short = np.where(np.abs(short) <= _ROUNDING * b, 0.0, short)
-        upper = np.where(b > 0.0, b + np.sqrt(short * (b + vq)), np.nan)
+        upper = np.where(b > 0.0, b + np.sqrt(short) * np.sqrt(b + vq), np.nan)
         # tangents of the half angles; their product is (1 - b)/(1 + b), so neither is a difference
         large = np.arctan2(upper, v * (1.0 + b))
         small = np.arctan2(v * (1.0 - b), upper)
@@ -255,9 +255,7 @@ def two_sided_errors(
     return TwoSidedErrors(*(plain(part) for part in parts))
 
 
-def pair_motions_mas_d(
-    beta: ArrayLike, angle_deg: ArrayLike, distance_kpc: ArrayLike
-) -> tuple[Floats, Floats]:
+def pair_motions_mas_d(beta: ArrayLike, angle_deg: ArrayLike, distance_kpc: ArrayLike) -> tuple[Floats, Floats]:
     """Proper motions (approaching, receding) of a symmetric pair: inverse of ``two_sided``."""
     d = checked("distance_kpc", distance_kpc, above=0.0)
     scale = C_AU_PER_DAY / d
@@ -283,9 +281,7 @@ def least_beta_of_separation(separation_c: ArrayLike) -> Floats:
         return plain(np.where(s <= np.sqrt(2.0), s / 2.0, np.sqrt((s - 1.0) * (s + 1.0)) / s))
 
 
-def receding_delay_days(
-    separation_mas: ArrayLike, approaching_mas_d: ArrayLike, receding_mas_d: ArrayLike
-) -> Floats:
+def receding_delay_days(separation_mas: ArrayLike, approaching_mas_d: ArrayLike, receding_mas_d: ArrayLike) -> Floats:
     """Days by which the receding knot reaches a separation from the core after the approaching one.
 
     separation_mas at least 0; motions above 0; negative if the knot called receding is the faster.

@@ -1,8 +1,8 @@
 """Paths of jet knots: straight, accelerated, helical, precessing; ejection date, core shift, sampling.
 
 Offsets are east and north of the core; position angles run from north through east. "Along" is along the
-stated direction of motion, "across" is positive toward smaller position angle: counter-clockwise in a diagram with
-east to the right and north up, which looks mirrored on an image with east to the left.
+stated direction of motion, "across" is positive toward smaller position angle: counter-clockwise in a plot
+with east to the right and north up, which looks mirrored on an image with east to the left.
 """
 
 from __future__ import annotations
@@ -34,9 +34,7 @@ class KnotPath:
         lock(self)
 
 
-def ballistic(
-    mjd: ArrayLike, crossing_mjd: ArrayLike, speed_mas_yr: ArrayLike, pa_deg: ArrayLike
-) -> KnotPath:
+def ballistic(mjd: ArrayLike, crossing_mjd: ArrayLike, speed_mas_yr: ArrayLike, pa_deg: ArrayLike) -> KnotPath:
     """Path of a knot that moves straight away from the core at constant speed (at least 0).
 
     Broadcasts; nan before ``crossing_mjd``. Raises DomainError.
@@ -91,17 +89,13 @@ def along_and_across(
         return plain((me * e + mn * n) / speed), plain((me * n - mn * e) / speed)
 
 
-def source_rate_per_yr(
-    along_mas_yr2: ArrayLike, speed_mas_yr: ArrayLike, redshift: ArrayLike = 0.0
-) -> Floats:
+def source_rate_per_yr(along_mas_yr2: ArrayLike, speed_mas_yr: ArrayLike, redshift: ArrayLike = 0.0) -> Floats:
     """Relative change of speed per year AT THE SOURCE: (1 + z) a/mu, as surveys quote it.
 
     speed_mas_yr above 0; redshift at least 0. Broadcasts. Raises DomainError.
     """
     mu = checked("speed_mas_yr", speed_mas_yr, above=0.0)
-    return plain(
-        (1.0 + checked("redshift", redshift, at_least=0.0)) * checked("along_mas_yr2", along_mas_yr2) / mu
-    )
+    return plain((1.0 + checked("redshift", redshift, at_least=0.0)) * checked("along_mas_yr2", along_mas_yr2) / mu)
 
 
 # ------------------------------------------------------------------ curved and precessing jets
@@ -124,7 +118,8 @@ def helix_speed_c(
     sine, cosine = sin_deg(angle), cos_deg(angle)
     side = -bt * np.sin(phase)
     lag = 1.0 - (side * sine + bz * cosine)
-    return plain((side * cosine + bz * sine) / lag), plain(bt * np.cos(phase) / lag)
+    # the axis projects on the sky to (-cos, 0, sin) of the inclination
+    return plain((bz * sine - side * cosine) / lag), plain(bt * np.cos(phase) / lag)
 
 
 @dataclass(frozen=True)
@@ -226,9 +221,7 @@ def ejection_fit(mjd: ArrayLike, separation_mas: ArrayLike, sigma_mas: ArrayLike
         checked("sigma_mas", sigma_mas, above=0.0),
     )
     if t.ndim == 0 or t.shape[-1] < 2 or np.any(np.ptp(t, axis=-1) == 0.0):
-        raise DomainError(
-            "mjd", np.array2string(t, threshold=5), "at least 2 different dates on the last axis"
-        )
+        raise DomainError("mjd", np.array2string(t, threshold=5), "at least 2 different dates on the last axis")
     weight = s**-2.0
     total = weight.sum(axis=-1)
     start = t[..., :1]  # dates are large: take them from the first one
@@ -256,9 +249,7 @@ def speed_error_factor(epochs: int) -> float:
     return float(np.sqrt(12.0 * (epochs - 1) / (epochs * (epochs + 1))))
 
 
-def span_for_speed_days(
-    sigma_mas: ArrayLike, speed_mas_d: ArrayLike, epochs: int, significance: float = 5.0
-) -> Floats:
+def span_for_speed_days(sigma_mas: ArrayLike, speed_mas_d: ArrayLike, epochs: int, significance: float = 5.0) -> Floats:
     """Shortest span of N even epochs that measures a speed at this significance (5: common practice).
 
     sigma_mas and speed_mas_d above 0. Broadcasts. Raises DomainError.

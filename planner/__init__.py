@@ -21,7 +21,19 @@ _HOMES = {
     "InputError": "planner.errors",
 }
 
-__all__ = ["Campaign", "Forecast", "InputError", "LightlagError", "Plan", "Windows", "__version__", "forecast", "plan", "read_campaign", "windows"]
+__all__ = [
+    "Campaign",
+    "Forecast",
+    "InputError",
+    "LightlagError",
+    "Plan",
+    "Windows",
+    "__version__",
+    "forecast",
+    "plan",
+    "read_campaign",
+    "windows",
+]
 
 
 def __getattr__(name: str) -> Any:

@@ -259,7 +259,7 @@ class Cosmology(Record):
 
 
 class Spacing(Record):
-    """Smallest and largest time between looks at a target."""
+    """Smallest and largest time between looks at a target, counted from night to night (dates)."""
 
     at_least_days: float = Field(default=0.5, ge=0)
     at_most_days: float | None = Field(default=None, gt=0)

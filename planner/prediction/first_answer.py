@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from planner.prediction.model import TargetModel
+from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.rings import RingModel
 from planner.records import Band, Floats, Forecast, Measurable, TargetForecast
 from planner.units import date_of_mjd
@@ -40,7 +40,7 @@ def _moves(band: Band, whole: Forecast) -> str:
     days = max(whole.mjd[last] - whole.mjd[first], 1.0)
     return (
         f"{band.observable} {mid:.4g} {band.unit} ({low:.4g} to {high:.4g}) on {whole.nights[first]}, "
-        f"moves {change:+.3g} {band.unit} by {whole.nights[last]} ({change / days * 30.4375:+.3g} a month)"
+        f"moves {_short(change)} {band.unit} by {whole.nights[last]} ({_short(change / days * 30.4375)} a month)"
     )
 
 
@@ -58,6 +58,12 @@ def _when(m: Measurable, whole: Forecast) -> str:
     if m.reason and m.chance.min() < 0.995:
         start += f"; in the way: {m.reason}"
     return start
+
+
+def _short(value: float) -> str:
+    """Signed, three digits, never in powers of ten."""
+    digits = max(0, 2 - int(np.floor(np.log10(abs(value))))) if value else 0
+    return f"{value:+,.{digits}f}".replace(",", "\N{NARROW NO-BREAK SPACE}")
 
 
 def _night(mjd: float) -> str:
@@ -108,8 +114,9 @@ def _plain(name: str) -> str:
     return name.removeprefix("ln ")
 
 
-def _columns(model: TargetModel) -> list[tuple[object, slice]]:
-    found, at = [], 0
+def _columns(model: TargetModel) -> list[tuple[FeatureModel, slice]]:
+    found: list[tuple[FeatureModel, slice]] = []
+    at = 0
     for feature in model.features:
         found.append((feature, slice(at, at + len(feature.observables))))
         at += len(feature.observables)

@@ -109,7 +109,7 @@ def _solve(precision: Floats, gradient: Floats) -> tuple[Floats, Floats]:
         x = np.full(shape, np.nan)
     with np.errstate(all="ignore"):
         q = np.sum(c * x, axis=-1)
-        value = 1.0 / q
+        value = np.array(1.0 / q)  # an array even for one matrix, so that single places can be mended
         v = x / q[..., None]
         check = np.sum(v * (f @ v[..., None])[..., 0], axis=-1)
         good = np.isfinite(value) & (value > 0.0) & (np.abs(check - value) <= _RESIDUAL * value)

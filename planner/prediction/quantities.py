@@ -8,10 +8,11 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
-from planner.campaign.records import LearnGoal
+from planner.campaign.records import Cosmology, LearnGoal
 from planner.physics import expansion, jet
 from planner.prediction.knots import KnotModel, PairModel
 from planner.prediction.model import STEP, FeatureModel, TargetModel
@@ -67,17 +68,22 @@ def _apparent_c(model: TargetModel, feature: KnotModel, theta: Floats) -> Floats
 
 def _speed_per_mas_yr(model: TargetModel) -> float:
     assert model.target.redshift is not None
-    return float(expansion.speed_c(1.0, model.target.redshift, cosmology_of(model)))
+    return _speed_at(model.target.redshift, model.target.cosmology)
 
 
-def cosmology_of(model: TargetModel) -> object:
+@lru_cache(maxsize=256)
+def _speed_at(redshift: float, numbers: Cosmology) -> float:
+    return float(expansion.speed_c(1.0, redshift, astropy_cosmology(numbers)))
+
+
+@lru_cache(maxsize=64)  # building one costs astropy 60 ms
+def astropy_cosmology(numbers: Cosmology) -> object:
     """Return the astropy cosmology of a target's numbers (flat unless omega_lambda is given)."""
     from astropy.cosmology import FlatLambdaCDM, LambdaCDM
 
-    c = model.target.cosmology
-    if c.omega_lambda is None:
-        return FlatLambdaCDM(H0=c.h0_km_s_mpc, Om0=c.omega_matter)
-    return LambdaCDM(H0=c.h0_km_s_mpc, Om0=c.omega_matter, Ode0=c.omega_lambda)
+    if numbers.omega_lambda is None:
+        return FlatLambdaCDM(H0=numbers.h0_km_s_mpc, Om0=numbers.omega_matter)
+    return LambdaCDM(H0=numbers.h0_km_s_mpc, Om0=numbers.omega_matter, Ode0=numbers.omega_lambda)
 
 
 def _rates(feature: PairModel, theta: Floats) -> tuple[Floats, Floats]:

@@ -10,7 +10,7 @@ import pytest
 from planner.campaign.quantities import QUANTITIES as NAMES
 from planner.campaign.records import LearnGoal
 from planner.prediction.model import TargetModel
-from planner.prediction.quantities import QUANTITIES, cosmology_of, wanted
+from planner.prediction.quantities import QUANTITIES, astropy_cosmology, wanted
 from planner.units import C_AU_PER_DAY
 
 
@@ -43,7 +43,7 @@ def test_apparent_speed_uses_the_transverse_comoving_distance(models: Mapping[st
     knot = model.features[0]
     theta = model.belief(8, 1, "test").draws
     speed = QUANTITIES[("knot", "speed_mas_yr")](model, knot, theta)
-    cosmology = cosmology_of(model)
+    cosmology = astropy_cosmology(model.target.cosmology)
     d_m_kpc = cosmology.comoving_transverse_distance(0.412).to_value("kpc")  # type: ignore[attr-defined]
     expected = speed / 365.25 * d_m_kpc / C_AU_PER_DAY  # 1 mas x 1 kpc = 1 au
     assert QUANTITIES[("knot", "apparent_speed_c")](model, knot, theta) == pytest.approx(expected, rel=1e-9)

@@ -1,0 +1,34 @@
+"""``lightlag check``: read a campaign, and say what was understood and what is assumed."""
+
+from __future__ import annotations
+
+from planner.cli.options import Folder
+
+
+def check(folder: Folder) -> None:
+    """Say what was understood and what is assumed.
+
+    Nothing is planned and nothing is written. Every default that the campaign leaves in place is listed
+    with where it comes from.
+
+    Example: lightlag check lightlag-demo
+    """
+    from planner import flow
+    from planner.cli.show import bullets, say, screen, show
+    from planner.report import tables
+    from planner.report.words import plain
+
+    campaign = flow.read_campaign(folder)
+    found = flow.understood(campaign)
+    console, season = screen(), campaign.file.season
+    say(console, plain(campaign.name), bold=True)
+    features = sum(len(t.features) for t in campaign.targets)
+    counts = f"targets: {len(campaign.targets)}, features: {features}, setups: {len(campaign.setups)}"
+    say(console, f"{counts}; evenings of {season.first} to {season.last}")
+    console.print()
+    for table in (tables.answers_table(found.answers), tables.ties_table(found.ties)):
+        if table.rows:
+            show(console, table)
+    show(console, tables.assumptions_table(found.assumptions))
+    bullets(console, "Warnings", map(plain, found.warnings))
+    say(console, "The campaign can be used.")

@@ -16,7 +16,9 @@ from typing import Annotated, Literal
 from pydantic import Field, field_validator, model_validator
 
 from planner.campaign.base import FileRecord, Filter, Name, PlanDay, Record, Source, UtcMoment, assumed
+from planner.campaign.echoes import Outburst, Ring, RingBrightness, SeenRing, SheetDust, Tilt
 from planner.campaign.goals import Goal, LearnGoal, LooksGoal
+from planner.campaign.jets import Fades, Knot, KnotFlux, KnotMotion, Neighbours, Pair, PairFlux, PairMotion
 from planner.campaign.places import CoreCrossing, Moment, Position
 from planner.campaign.quantities import Tolerance
 from planner.campaign.sites import (
@@ -33,28 +35,7 @@ from planner.campaign.sites import (
     Telescope,
     Twelve,
 )
-from planner.campaign.targets import (
-    Cosmology,
-    Fades,
-    Feature,
-    Knot,
-    KnotFlux,
-    KnotMotion,
-    Neighbours,
-    Nuisances,
-    Outburst,
-    Pair,
-    PairFlux,
-    PairMotion,
-    Ring,
-    RingBrightness,
-    SeenRing,
-    SheetDust,
-    Spacing,
-    Target,
-    Tilt,
-    feature_kind,
-)
+from planner.campaign.targets import Cosmology, Feature, Nuisances, Spacing, Target, feature_kind
 
 __all__ = [
     "Allocation",

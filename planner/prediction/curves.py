@@ -7,7 +7,8 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 
 from planner.campaign.records import SetupRef, Site, Target
-from planner.prediction.look import CameraSky, LookErrors, fwhm_arcsec, look_errors, ring_view
+from planner.prediction.look import LookErrors, look_errors
+from planner.prediction.look_rings import CameraSky, fwhm_arcsec, ring_view, source_mag
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.rings import RingModel
 from planner.records import BAND_SHARES, Band, Belief, Bools, Floats, Measurable, TargetForecast, Track
@@ -131,7 +132,6 @@ def _span(
 ) -> tuple[Floats, Floats]:  # fmt: skip
     """Smallest and largest radius or separation that the setup could measure, medians over draws."""
     from planner.instruments import camera, interferometer
-    from planner.prediction.look import _source_mag
 
     few = theta[: min(128, len(theta))]  # a median for a figure
     if isinstance(feature, RingModel):
@@ -139,7 +139,7 @@ def _span(
         assert sky is not None
         view = ring_view(feature, few, mjd, setup.camera, sky)
         glare = camera.glare_radius_arcsec(
-            setup.camera, _source_mag(model, setup.camera.filter), view.mag_arcsec2, sky.fwhm_arcsec
+            setup.camera, source_mag(model, setup.camera.filter), view.mag_arcsec2, sky.fwhm_arcsec
         )
         low = quantiles(glare + view.width_arcsec / 2, (0.5,))[0][0]
         return low, np.full(len(mjd), setup.camera.field_arcmin * 30.0)

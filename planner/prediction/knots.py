@@ -229,7 +229,8 @@ def build_knot(
     return KnotModel(
         record=record, target=target, t0=_clock(layout, f"{name}/core_crossing", motion.core_crossing.sigma_days),
         velocity=(velocity[0], velocity[1]), along=along, across=across,
-        ln_flux=_scatter(layout, name, record.flux.sigma_fraction), reference_mjd=middle_mjd, wander=wander, beams=beams,
+        ln_flux=_scatter(layout, name, record.flux.sigma_fraction), reference_mjd=middle_mjd,
+        wander=wander, beams=beams,
     )  # fmt: skip
 
 
@@ -244,7 +245,8 @@ def build_pair(
         approaching=layout.add_law(f"{name}/approaching_mas_d", "mas/d", motion.approaching_mas_d),
         receding=layout.add_law(f"{name}/receding_mas_d", "mas/d", motion.receding_mas_d),
         pa=layout.add_law(f"{name}/pa_deg", "deg", motion.pa_deg),
-        along=along, across=across, ln_flux=_scatter(layout, name, record.flux.sigma_fraction), wander=wander, beams=beams,
+        along=along, across=across, ln_flux=_scatter(layout, name, record.flux.sigma_fraction),
+        wander=wander, beams=beams,
     )  # fmt: skip
 
 

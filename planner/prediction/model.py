@@ -6,7 +6,7 @@ numerical derivative. Shapes: theta (..., P), mjd (T,), observables (..., T, M),
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -86,6 +86,9 @@ class TargetModel:
     def belief(self, count: int, seed: int, purpose: str) -> Belief:
         """Prior belief with ``count`` draws from the stream named ``purpose``."""
         return prior_belief(self.target.name, self.blocks, count, named_seed(seed, self.target.name, purpose))
+
+
+Quantity = Callable[[TargetModel, FeatureModel, Floats], Floats]  # (model, feature, theta (N, P)) -> (N,)
 
 
 def build_model(campaign: Campaign, target: Target, beams_mas: Mapping[str, float]) -> TargetModel:

@@ -118,9 +118,7 @@ class Reach:
     share: Floats  # (G,) share of draws that reach the goal
 
 
-def season_reach(
-    campaign: Campaign, model: TargetModel, book: SlotBook, part: TargetPart, windows: Windows
-) -> Reach:
+def season_reach(campaign: Campaign, model: TargetModel, book: SlotBook, part: TargetPart, windows: Windows) -> Reach:
     """Take every slot at once, limits and weather ignored, at draws of their own."""
     local: Ints = np.arange(len(part.slots), dtype=np.int64)
     middles = np.array([book.slots[int(k)].best_mjd for k in part.slots], dtype=float)

@@ -12,7 +12,8 @@ from planner.campaign.records import Allocation, Campaign, FixedLook, LearnGoal,
 from planner.errors import PlanningError
 from planner.instruments import camera
 from planner.prediction.knots import KnotModel
-from planner.prediction.look import CameraSky, LookErrors, camera_seconds, fwhm_arcsec, look_errors
+from planner.prediction.look import LookErrors, look_errors
+from planner.prediction.look_rings import CameraSky, camera_seconds, fwhm_arcsec
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.quantities import wanted
 from planner.records import SKY_CLASSES, Floats, Ints, Mode, Slot, Windows

@@ -15,9 +15,7 @@ BEAMS_MAS = {"cairn-array/43ghz": 0.2, "cairn-array/22ghz": 0.4}
 
 @pytest.fixture(scope="session")
 def tracks() -> Mapping[str, Track]:
-    return {
-        name: Track(6.0, 3.0, 0.0, 8, beam * 1.5, beam / 1.5, -5.0, 0.0006) for name, beam in BEAMS_MAS.items()
-    }
+    return {name: Track(6.0, 3.0, 0.0, 8, beam * 1.5, beam / 1.5, -5.0, 0.0006) for name, beam in BEAMS_MAS.items()}
 
 
 @pytest.fixture(scope="session")

@@ -10,7 +10,8 @@ import pytest
 from planner.campaign.records import Campaign, SetupRef
 from planner.instruments import interferometer
 from planner.prediction.curves import quantiles, reference_sky
-from planner.prediction.look import LookErrors, camera_seconds, look_errors
+from planner.prediction.look import LookErrors, look_errors
+from planner.prediction.look_rings import camera_seconds
 from planner.prediction.model import TargetModel
 from planner.records import Track
 from planner.units import mjd_of_date
@@ -27,9 +28,7 @@ def _camera(campaign: Campaign, model: TargetModel, name: str, minutes: float, *
     return look_errors(model, theta, MJD, ref, sky=sky, seconds=np.full(len(MJD), minutes * 60.0))
 
 
-def test_one_look_measures_every_ring_in_the_field(
-    demo_campaign: Campaign, models: Mapping[str, TargetModel]
-) -> None:
+def test_one_look_measures_every_ring_in_the_field(demo_campaign: Campaign, models: Mapping[str, TargetModel]) -> None:
     errors = _camera(demo_campaign, models["Sallow"], "brack-ridge/wide-camera", 120.0)
     assert errors.measurable.shape == (64, len(MJD), 2)
     assert errors.measurable.mean(axis=(0, 1)).min() > 0.9

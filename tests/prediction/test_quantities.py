@@ -9,8 +9,9 @@ import pytest
 
 from planner.campaign.quantities import QUANTITIES as NAMES
 from planner.campaign.records import LearnGoal
+from planner.prediction.jet_quantities import astropy_cosmology
 from planner.prediction.model import TargetModel
-from planner.prediction.quantities import QUANTITIES, astropy_cosmology, wanted
+from planner.prediction.quantities import QUANTITIES, wanted
 from planner.units import C_AU_PER_DAY
 
 

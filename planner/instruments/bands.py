@@ -63,9 +63,7 @@ def photons_e_s(setup: CameraSetup, filter_name: str, mag: ArrayLike) -> Floats:
     Returns e/s of the same shape: zero flux x photons per jansky x relative width x area x throughput.
     """
     band = passband(filter_name)
-    at_zero = (
-        band.zero_jy * PHOTONS_PER_JY * band.relative_width * collecting_area_m2(setup) * setup.throughput
-    )
+    at_zero = band.zero_jy * PHOTONS_PER_JY * band.relative_width * collecting_area_m2(setup) * setup.throughput
     rate: Floats = at_zero * 10.0 ** (-0.4 * np.asarray(mag, dtype=float))
     return rate
 

@@ -106,9 +106,7 @@ def look_minutes(setup: CameraSetup, seconds: ArrayLike) -> Floats:
 
 def image_fwhm_arcsec(seeing_arcsec: ArrayLike, airmass: ArrayLike) -> Floats:
     """Return the image FWHM at an airmass from the zenith seeing: seeing x airmass^0.6 (common practice)."""
-    return np.asarray(np.asarray(seeing_arcsec, float) * np.asarray(airmass, float) ** SEEING_AIRMASS_POWER)[
-        ()
-    ]
+    return np.asarray(np.asarray(seeing_arcsec, float) * np.asarray(airmass, float) ** SEEING_AIRMASS_POWER)[()]
 
 
 def gaussian_aperture(fwhm_arcsec: ArrayLike, pixel_arcsec: ArrayLike) -> tuple[float, Floats]:
@@ -117,9 +115,7 @@ def gaussian_aperture(fwhm_arcsec: ArrayLike, pixel_arcsec: ArrayLike) -> tuple[
     Radius 0.673 FWHM holds 1 - 2^(-4 x 0.673^2) = 0.715 of the light.
     """
     share = 1.0 - 2.0 ** (-4.0 * APERTURE_RADIUS_FWHM**2)
-    radius = (
-        APERTURE_RADIUS_FWHM * _positive("fwhm_arcsec", fwhm_arcsec) / _positive("pixel_arcsec", pixel_arcsec)
-    )
+    radius = APERTURE_RADIUS_FWHM * _positive("fwhm_arcsec", fwhm_arcsec) / _positive("pixel_arcsec", pixel_arcsec)
     return share, np.asarray(math.pi * radius**2)[()]
 
 
@@ -282,9 +278,7 @@ def _ring_rates(
 ) -> tuple[Floats, Floats, Floats]:
     """Source e/s in all, sky e/s/pixel, pixels."""
     area, factor = _not_negative("area_arcsec2", area_arcsec2), _positive("rate_factor", rate_factor)
-    dimmed = np.asarray(mag_arcsec2, float) + np.asarray(extinction_mag_airmass, float) * np.asarray(
-        airmass, float
-    )
+    dimmed = np.asarray(mag_arcsec2, float) + np.asarray(extinction_mag_airmass, float) * np.asarray(airmass, float)
     source = factor * photons_e_s(setup, filter_name, dimmed) * area
     sky = factor * photons_e_s(setup, filter_name, sky_mag_arcsec2) * setup.pixel_arcsec**2
     return source, sky, area / setup.pixel_arcsec**2
@@ -321,9 +315,7 @@ def _setup_snr(setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, 
     return snr(source, sky, seconds, pixels, frames=frames_for(setup, seconds), **_noise_of(setup))
 
 
-def _setup_seconds(
-    setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, wanted: ArrayLike
-) -> Floats:
+def _setup_seconds(setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, wanted: ArrayLike) -> Floats:
     """Least time whose own number of frames reaches ``wanted``.
 
     Start with one frame and give each answer the frames it needs until nothing changes. The time grows at

@@ -169,9 +169,7 @@ def projected_fwhm(major: ArrayLike, minor: ArrayLike, beam_pa_deg: ArrayLike, p
 # ------------------------------------------------------------------ what can be told of a knot
 
 
-def smallest_size(
-    beam_fwhm: ArrayLike, snr: ArrayLike, weighting: Literal["natural", "uniform"] = "natural"
-) -> Floats:
+def smallest_size(beam_fwhm: ArrayLike, snr: ArrayLike, weighting: Literal["natural", "uniform"] = "natural") -> Floats:
     """Smallest size that can be told from a point; unit of ``beam_fwhm``.
 
     ``beam_fwhm``: sqrt(major x minor), or the cut along one position angle. Returns

@@ -126,9 +126,7 @@ def test_noise_equals_the_scatter_of_simulated_images(images):
 
     def background():
         inside = rng.poisson(n * (b + d) * t, trials) + rng.normal(0, read * math.sqrt(n * frames), trials)
-        beside = rng.poisson(n_b * (b + d) * t, trials) + rng.normal(
-            0, read * math.sqrt(n_b * frames), trials
-        )
+        beside = rng.poisson(n_b * (b + d) * t, trials) + rng.normal(0, read * math.sqrt(n_b * frames), trials)
         return inside - beside * n / n_b
 
     flux = rng.poisson(s * t, trials) + background()
@@ -141,9 +139,11 @@ def test_noise_equals_the_scatter_of_simulated_images(images):
     assert np.std(flux) == pytest.approx(s * t / ratio, rel=0.02)
 
 
-def plain_seconds(setup: CameraSetup, source: float, sky: float, pixels: float, wanted: float) -> float:
-    """Try one frame, two frames, ... until the time fits into them."""
-    for frames in range(1, 100_000):
+def plain_seconds(
+    setup: CameraSetup, source: float, sky: float, pixels: float, wanted: float, most: int
+) -> float | None:
+    """Try one frame, two frames, ... until the time fits into them; None if ``most`` are not enough."""
+    for frames in range(1, most + 1):
         t = camera.seconds_for_snr(
             wanted, source, sky, pixels,
             dark_e_s=setup.dark_e_s, read_noise_e=setup.read_noise_e, frames=frames,
@@ -151,7 +151,7 @@ def plain_seconds(setup: CameraSetup, source: float, sky: float, pixels: float, 
         )  # fmt: skip
         if not t > frames * setup.longest_exposure_s * (1 + 1e-9):
             return float(t)
-    raise AssertionError("no number of frames is enough")
+    return None
 
 
 @settings(max_examples=40, deadline=None)
@@ -163,16 +163,15 @@ def plain_seconds(setup: CameraSetup, source: float, sky: float, pixels: float, 
     read=st.floats(0.0, 40.0),
     difference=st.booleans(),
 )
-def test_ring_seconds_is_the_first_number_of_frames_that_is_enough(
-    mag, area, wanted, longest, read, difference
-):
+def test_ring_seconds_is_the_first_number_of_frames_that_is_enough(mag, area, wanted, longest, read, difference):
     setup = setup_of(longest_exposure_s=longest, read_noise_e=read, difference_imaging=difference)
     args = (setup, "R", mag, area, 20.9, 1.3, 0.08)
     found = camera.ring_seconds(*args, wanted)
-    source, sky, pixels = camera._ring_rates(*args, 1.0)
-    assert found == pytest.approx(
-        plain_seconds(setup, float(source), float(sky), float(pixels), wanted), rel=1e-9
-    )
+    plain = plain_seconds(setup, *(float(x) for x in camera._ring_rates(*args, 1.0)), wanted, most=200)
+    if plain is None:
+        assert found > 200 * longest
+    else:
+        assert found == pytest.approx(plain, rel=1e-9)
     assert camera.ring_snr(*args, found) == pytest.approx(wanted, rel=1e-6)
 
 
@@ -212,8 +211,7 @@ def test_snr_grows_with_time_and_stays_below_the_cap(source, sky, pixels, read, 
 def test_difference_imaging_counts_the_background_twice():
     # Sky-limited: noise grows by sqrt(2). The source is 1e-4 of the sky here, hence 1e-3.
     plain, twice = (
-        camera.ring_snr(setup_of(difference_imaging=d), "V", 30.0, 100.0, 20.0, 1.0, 0.1, 600.0)
-        for d in (False, True)
+        camera.ring_snr(setup_of(difference_imaging=d), "V", 30.0, 100.0, 20.0, 1.0, 0.1, 600.0) for d in (False, True)
     )
     assert plain / twice == pytest.approx(math.sqrt(2), rel=1e-3)
 
@@ -335,16 +333,12 @@ def test_wings_keep_their_light_when_the_seeing_stretches_them():
 
 
 def test_glare_radius_is_two_fwhm_for_a_faint_or_absent_source():
-    radii = camera.glare_radius_arcsec(
-        setup_of(), np.array([28.0, np.inf, np.inf]), np.array([25, 25, np.inf]), 0.8
-    )
+    radii = camera.glare_radius_arcsec(setup_of(), np.array([28.0, np.inf, np.inf]), np.array([25, 25, np.inf]), 0.8)
     assert radii == pytest.approx([1.6, 1.6, 1.6], rel=1e-12)
 
 
 def test_glare_radius_broadcasts():
-    shape = camera.glare_radius_arcsec(
-        setup_of(), np.full((3, 1), 12.0), np.full(4, 25.0), np.full((2, 1, 1), 1.0)
-    )
+    shape = camera.glare_radius_arcsec(setup_of(), np.full((3, 1), 12.0), np.full(4, 25.0), np.full((2, 1, 1), 1.0))
     assert shape.shape == (2, 3, 4)
 
 

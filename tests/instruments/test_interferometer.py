@@ -77,9 +77,7 @@ def test_image_noise_equals_the_plain_sum_over_pairs(sefd, seconds):
 @given(sefd=st.floats(10.0, 5000.0), stations=st.integers(2, 30))
 def test_equal_stations_reduce_to_the_short_form(sefd, stations):
     short = sefd / (0.7 * math.sqrt(2 * stations * (stations - 1) * 1e8 * 600.0))
-    assert radio.image_noise_jy(np.full(stations, sefd), 0.7, 1e8, 600.0, 2) == pytest.approx(
-        short, rel=1e-12
-    )
+    assert radio.image_noise_jy(np.full(stations, sefd), 0.7, 1e8, 600.0, 2) == pytest.approx(short, rel=1e-12)
 
 
 @settings(max_examples=40, deadline=None)
@@ -227,9 +225,7 @@ def test_cut_and_projection():
 
 
 @settings(max_examples=60, deadline=None)
-@given(
-    minor=st.floats(0.05, 1.0), ratio=st.floats(1.0, 10.0), beam=st.floats(-90, 90), jet=st.floats(-180, 180)
-)
+@given(minor=st.floats(0.05, 1.0), ratio=st.floats(1.0, 10.0), beam=st.floats(-90, 90), jet=st.floats(-180, 180))
 def test_cut_lies_between_the_axes_and_never_above_the_projection(minor, ratio, beam, jet):
     cut = radio.cut_fwhm(minor * ratio, minor, beam, jet)
     assert minor * (1 - 1e-12) <= cut <= radio.projected_fwhm(minor * ratio, minor, beam, jet) * (1 + 1e-12)

@@ -252,8 +252,9 @@ def _recount(campaign: Campaign, result: Plan, progress: Progress) -> None:
 
 @dataclass(frozen=True)
 class Understanding:
-    """What ``check`` tells: what was assumed, first answers, ties between parameters, failing assumptions."""
+    """What ``check`` tells: facts read, defaults assumed, first answers, ties of parameters, failing assumptions."""
 
+    facts: tuple[tuple[str, str, str], ...]  # target, feature ("" for the target itself), what was written
     assumptions: tuple[Assumption, ...]
     answers: tuple[tuple[str, str, str], ...]  # target, feature, text
     ties: tuple[tuple[str, str], ...]  # target, text
@@ -268,6 +269,7 @@ def understood(campaign: Campaign, *, progress: Progress = silent) -> Understand
 
 def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understanding:
     from planner.campaign.assumptions import assumptions
+    from planner.campaign.in_words import facts_of
     from planner.prediction.first_answer import answers_of, ties_of
     from planner.schedule.slots import setup_targets
 
@@ -281,7 +283,9 @@ def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understa
         answers += [(target.name, feature, text) for feature, text in answers_of(one, made)]
         ties += [(target.name, text) for text in ties_of(ready.models[target.name], nights, setups)]
         warnings += list(one.warnings)
-    return Understanding(tuple(assumptions(campaign)), tuple(answers), tuple(ties), tuple(warnings))
+    return Understanding(
+        tuple(facts_of(campaign)), tuple(assumptions(campaign)), tuple(answers), tuple(ties), tuple(warnings)
+    )
 
 
 @dataclass(frozen=True)

@@ -6,7 +6,7 @@ from planner.cli.options import Folder
 
 
 def check(folder: Folder) -> None:
-    """Say what was understood and what is assumed.
+    """Say what was understood, what is assumed, and give a first answer.
 
     Nothing is planned and nothing is written. Every default that the campaign leaves in place is listed
     with where it comes from.
@@ -26,9 +26,10 @@ def check(folder: Folder) -> None:
     counts = f"targets: {len(campaign.targets)}, features: {features}, setups: {len(campaign.setups)}"
     say(console, f"{counts}; evenings of {season.first} to {season.last}")
     console.print()
-    for table in (tables.answers_table(found.answers), tables.ties_table(found.ties)):
+    show(console, tables.facts_table(found.facts))
+    show(console, tables.assumptions_table(found.assumptions))
+    for table in (tables.ties_table(found.ties), tables.answers_table(found.answers)):
         if table.rows:
             show(console, table)
-    show(console, tables.assumptions_table(found.assumptions))
     bullets(console, "Warnings", map(plain, found.warnings))
     say(console, "The campaign can be used.")

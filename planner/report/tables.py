@@ -329,16 +329,26 @@ def windows_limits_by_month(windows: Windows, target: str) -> tuple[TextTable, .
 
 
 def assumptions_table(assumptions: Iterable[AssumedValue], words: Callable[[object], str] = str) -> TextTable:
-    """Every default that the campaign left in place, with where it comes from; the same default stands once."""
+    """Every default that the campaign left in place, with where it comes from.
+
+    The same default of several owners stands once; fields with one reason and the same owners share a row.
+    """
     owners: dict[tuple[str, str, str], dict[str, None]] = {}
     for a in assumptions:
         field = re.sub(r"\[\d+\]", "", plain(a.field))  # goals[0].odds and goals[1].odds are one default
         owners.setdefault((field, plain(words(a.value)), plain(a.why)), {})[plain(a.owner)] = None
-    rows = tuple((*key, "; ".join(names)) for key, names in owners.items())
+    shared: dict[tuple[str, str], list[str]] = {}
+    for (field, value, why), names in owners.items():
+        shared.setdefault((why, "; ".join(names)), []).append(f"{field} {value}")
+    rows = tuple(("; ".join(fields), why, names) for (why, names), fields in shared.items())
     note = "" if rows else "nothing is assumed: the campaign states every value"
-    return TextTable(
-        "Assumed, because the campaign does not say", ("field", "value", "why", "of"), rows, frozenset(), note
-    )
+    return TextTable("Assumed, because the campaign does not say", ("assumed", "why", "of"), rows, frozenset(), note)
+
+
+def facts_table(facts: Iterable[tuple[str, str, str]]) -> TextTable:
+    """What was read: one line a target and one a feature."""
+    rows = tuple((plain(feature) if feature else plain(target), plain(text)) for target, feature, text in facts)
+    return TextTable("Understood", ("of", "what the campaign says"), rows)
 
 
 def answers_table(answers: Iterable[tuple[str, str, str]]) -> TextTable:

@@ -167,14 +167,19 @@ def test_a_target_month_by_month_shows_the_shutdown_in_its_month() -> None:
 
 def test_assumptions_carry_where_they_come_from() -> None:
     table = tables.assumptions_table(UNDERSTOOD.assumptions)
-    assert table.rows[0] == ("dust.thickness_pc", "0.5", "thin filament, common practice; no source", RING)
+    assert table.rows[0] == ("dust.thickness_pc 0.5", "thin filament, common practice; no source", RING)
     assert tables.assumptions_table(()).note == "nothing is assumed: the campaign states every value"
 
 
 def test_the_same_default_stands_once_with_everyone_it_belongs_to() -> None:
     same = [Assumed(owner, f"goals[{i}].odds", 0.8, "why") for owner in ("A", "B") for i in range(2)]
     table = tables.assumptions_table([*same, Assumed("A", "goals[0].odds", 0.9, "why")])
-    assert table.rows == (("goals.odds", "0.8", "why", "A; B"), ("goals.odds", "0.9", "why", "A"))
+    assert table.rows == (("goals.odds 0.8", "why", "A; B"), ("goals.odds 0.9", "why", "A"))
+
+
+def test_fields_with_one_reason_and_the_same_owner_share_a_row() -> None:
+    found = [Assumed("setup a", "throughput", 0.3, "preset x"), Assumed("setup a", "pixel_arcsec", 0.4, "preset x")]
+    assert tables.assumptions_table(found).rows == (("throughput 0.3; pixel_arcsec 0.4", "preset x", "setup a"),)
 
 
 def test_unlimited_and_unknown_numbers_have_words() -> None:

@@ -189,7 +189,7 @@ def goal_results(
             scale = 100.0 if percent else 1.0
             best = float(reach[part.name].typical[g]) * scale
             found.append(GoalResult(
-                part.name, feature.name, f"{goal.learn} to {goal.to}", goal.to.value, goal.to.unit,
+                part.name, feature.name, goal.words, goal.to.value, goal.to.unit,
                 prior_sigma(model, feature, goal, beliefs[part.name]), luck.typical * scale, best, luck.odds,
                 luck.odds_error, goal.odds, utility, data_share(part, planned, chosen[part.name].local),
                 unreachable(goal, feature, best, float(reach[part.name].share[g])),

@@ -80,7 +80,7 @@ def _batch(model: TargetModel, setup: SetupRef, windows: Windows, rows: Ints, th
     assert setup.camera is not None
     assert isinstance(setup.site, Site)
     sky = camera_sky(setup.site, setup, windows, rows)
-    seconds = np.ceil(camera_seconds(model, theta, mjd, setup.camera, sky) / 60.0) * 60.0
+    seconds = np.ceil(camera_seconds(model, theta, mjd, setup.camera, sky, setup.name) / 60.0) * 60.0
     minutes = np.ceil(camera.look_minutes(setup.camera, seconds))
     return _Batch(setup, rows, mjd, seconds, minutes, sky)
 
@@ -314,7 +314,7 @@ def learn_part(model: TargetModel, feature: FeatureModel, goal: LearnGoal, weigh
             "ask for another quantity or check the priors"
         )
     gradient[bad] = gradient[~bad].mean(axis=0)
-    name = f"{feature.name}: {goal.learn} to {goal.to}"
+    name = f"{feature.name}: {goal.words}"
     return LearnPart(name, weight, gradient, np.full(len(draws), what.sigma**-2))
 
 
@@ -334,9 +334,8 @@ def largest_gap_days(model: TargetModel, draws: Floats) -> float:
     """
     gap = model.target.spacing.at_most_days or math.inf
     for feature in model.features:
-        if isinstance(feature, KnotModel) and feature.record.neighbours is not None:
-            speed = np.hypot(draws[:, feature.velocity[0]], draws[:, feature.velocity[1]])
-            fast = float(np.quantile(speed, 0.84)) / 365.25
+        if isinstance(feature, KnotModel) and feature.record.neighbours is not None and not feature.stationary:
+            fast = float(np.quantile(feature.speed_mas_yr(draws), 0.84)) / 365.25
             gap = min(gap, feature.record.neighbours.spacing_mas / (2.0 * fast))
     return max(gap, model.target.spacing.at_least_days + 1.0)
 

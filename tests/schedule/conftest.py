@@ -1,0 +1,8 @@
+"""Lets the tests of this room import the invented problems that lie beside them."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+sys.path.insert(0, str(Path(__file__).parent))

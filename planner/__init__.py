@@ -38,9 +38,12 @@ __all__ = [
 
 def __getattr__(name: str) -> Any:
     if name == "__version__":
-        from importlib.metadata import version
+        from importlib.metadata import PackageNotFoundError, version
 
-        return version("lightlag")
+        try:
+            return version("lightlag")
+        except PackageNotFoundError:  # run from a source tree that was never installed
+            return "0 (not installed)"
     if name in _HOMES:
         value = getattr(import_module(_HOMES[name]), name)
         globals()[name] = value

@@ -68,7 +68,7 @@ class TargetPricer:
         """Choose the local slots that may be taken."""
         self.kept = np.setdiff1d(kept, self.forced)
         root = np.sqrt(self.part.chance[self.kept])[None, :, None, None]
-        self._rows = _compact(self.part.rows[:, self.kept]) * root
+        self._rows = compact(self.part.rows[:, self.kept]) * root
         self._usable = [goal.usable[:, self.kept] * self.part.chance[self.kept] for goal in self._count]
 
     def value(self, chosen: Sequence[int]) -> float:
@@ -187,7 +187,7 @@ class TargetPricer:
         return sets
 
 
-def _compact(rows: Floats) -> Floats:
+def compact(rows: Floats) -> Floats:
     """Leave out rows that are zero in every draw: (B, n, M, P) to (B, n, fewer, P)."""
     if rows.shape[1] == 0:
         return rows

@@ -8,15 +8,17 @@ from dataclasses import dataclass
 import numpy as np
 
 from planner.campaign.records import Campaign, LearnGoal, LooksGoal
+from planner.prediction.arclets import ArcletModel
 from planner.prediction.information import gathered, information
-from planner.prediction.look import look_errors
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.quantities import wanted
-from planner.records import Belief, Floats, GoalResult, Ints, Slot, Windows
+from planner.prediction.rings import RingModel
+from planner.records import Belief, Bools, Floats, GoalResult, Ints, Slot, Windows
+from planner.schedule.candidates import Batch, camera_sky, errors_of, mode_track
 from planner.schedule.odds import GoalOdds, simulate_odds
 from planner.schedule.problem import CountPart, GoalPart, LearnPart, TargetPart
-from planner.schedule.slots import SlotBook, _Batch, camera_sky, learn_part
-from planner.schedule.weather import simulate_weather
+from planner.schedule.slots import SlotBook, learn_part
+from planner.schedule.weather import nightly_shares, simulate_weather, weather_roots
 
 SEASONS = 1000  # simulated seasons: standard error of odds near one half is 1.6 %
 REACH_DRAWS = 64  # standard error of a share 6 % at most: enough to say that a goal is out of reach
@@ -42,13 +44,10 @@ def odds_part(
     rows = np.zeros((len(draws), count, observables, len(keep)))
     usable = np.zeros((len(draws), count, len(model.features)))
     slots = [book.slots[int(part.slots[i])] for i in chosen.local]
-    for name in sorted({slot.setup for slot in slots}):
-        which = np.array([i for i, slot in enumerate(slots) if slot.setup == name])
-        batch = _batch_of(campaign, book, windows, [slots[i] for i in which], chosen.middle_mjd[which])
-        errors = look_errors(
-            model, draws, batch.mjd, batch.setup, sky=batch.sky, seconds=batch.seconds,
-            track=windows.tracks.get((model.target.name, name)),
-        )  # fmt: skip
+    for name, share in sorted({(slot.setup, slot.mode.share) for slot in slots}):
+        which = np.array([i for i, slot in enumerate(slots) if (slot.setup, slot.mode.share) == (name, share)])
+        batch = _batch_of(campaign, model, book, windows, [slots[i] for i in which], chosen.middle_mjd[which])
+        errors = errors_of(model, draws, batch)
         rows[:, which] = errors.whiten(model.derivatives(draws, batch.mjd, name))[..., keep]
         usable[:, which] = errors.measurable
     goals: list[GoalPart] = []
@@ -68,26 +67,58 @@ def odds_part(
 
 
 def _batch_of(
-    campaign: Campaign, book: SlotBook, windows: Windows, slots: Sequence[Slot], middle_mjd: Floats
-) -> _Batch:
-    setup = campaign.setup(slots[0].setup)
+    campaign: Campaign, model: TargetModel, book: SlotBook, windows: Windows, slots: Sequence[Slot], middle_mjd: Floats
+) -> Batch:
+    """Chosen looks with one setup in one mode, at their own times."""
+    setup, share = campaign.setup(slots[0].setup), slots[0].mode.share
     rows = book.window_rows[[slot.number for slot in slots]]
-    sky = None if setup.is_array else camera_sky(setup.site, setup, windows, rows)  # type: ignore[arg-type]
-    seconds = np.array([slot.mode.exposure_s for slot in slots])
-    minutes = np.array([slot.mode.minutes for slot in slots])
-    return _Batch(setup, rows, middle_mjd, seconds, minutes, sky)
+    return Batch(
+        setup=setup, rows=rows, nights=windows.night[rows], mjd=middle_mjd,
+        seconds=np.array([slot.mode.exposure_s for slot in slots]),
+        minutes=np.array([slot.mode.minutes for slot in slots]),
+        earliest_mjd=np.array([slot.earliest_start_mjd for slot in slots]),
+        latest_mjd=np.array([slot.latest_end_mjd for slot in slots]),
+        sky=None if setup.is_array else camera_sky(setup, windows, rows),
+        track=mode_track(model.target, setup, windows, share) if setup.is_array else None, share=share,
+    )  # fmt: skip
 
 
-def clear_seasons(
+def good_seasons(
     campaign: Campaign, windows: Windows, seed: np.random.SeedSequence, seasons: int
-) -> dict[str, np.ndarray]:
-    """Simulated clear nights of every site, (seasons, nights) each; sites have weather of their own."""
-    found = {}
-    for child, (slug, site) in zip(seed.spawn(len(campaign.sites)), sorted(campaign.sites.items()), strict=True):
-        months = np.array([int(night[5:7]) for night in windows.nights])
-        clear = np.array(site.months.clear)[months - 1]
-        found[slug] = simulate_weather(clear, site.months.persistence, seasons, np.random.default_rng(child))
+) -> dict[tuple[str, str], Bools]:
+    """Simulated nights that serve, (seasons, nights) each, by site and by what a setup needs (clear, thin).
+
+    Sites that name one another share their random numbers: nights are good together as far as their shares agree.
+    A clear night is good for setups that make do with thin cloud too.
+    """
+    sites = dict(sorted(campaign.sites.items()))
+    root = weather_roots({slug: site.months.weather_with for slug, site in sites.items()})
+    seeds = dict(zip(sites, seed.spawn(len(sites)), strict=True))
+    months = np.array([int(night[5:7]) for night in windows.nights])
+    found: dict[tuple[str, str], Bools] = {}
+    for slug, site in sites.items():
+        clear = np.zeros((seasons, len(months)), dtype=bool)
+        for needs in ("clear", "thin"):
+            shares = nightly_shares(site.months.good(needs), months)
+            rng = np.random.default_rng(seeds[root[slug]])
+            clear = clear | simulate_weather(shares, site.months.persistence, seasons, rng)
+            found[slug, needs] = clear
     return found
+
+
+def good_looks(
+    campaign: Campaign, slots: Sequence[Slot], good: Mapping[tuple[str, str], Bools], rng: np.random.Generator,
+    seasons: int,
+) -> Bools:  # fmt: skip
+    """Which looks succeed, (seasons, looks): weather that serves, and enough stations, drawn for each look."""
+    success = np.ones((seasons, len(slots)), dtype=bool)
+    for i, slot in enumerate(slots):
+        setup = campaign.setup(slot.setup)
+        needs = setup.camera.needs if setup.camera is not None else "clear"
+        success[:, i] = good[setup.site_slug, needs][:, slot.night_index]
+        if slot.chance_stations < 1.0:
+            success[:, i] &= rng.random(seasons) < slot.chance_stations
+    return success
 
 
 def season_odds(
@@ -95,16 +126,16 @@ def season_odds(
     chosen: Mapping[str, Chosen], seed: np.random.SeedSequence, seasons: int = SEASONS,
 ) -> dict[str, tuple[GoalOdds, ...]]:  # fmt: skip
     """Odds of every goal: each season draws its weather and its truth (a fresh draw of the belief)."""
-    weather_seed, rng_seed = seed.spawn(2)
-    clear = clear_seasons(campaign, windows, weather_seed, seasons)
+    weather_seed, rng_seed, station_seed = seed.spawn(3)
+    good = good_seasons(campaign, windows, weather_seed, seasons)
+    station_rng = np.random.default_rng(station_seed)
     found = {}
     for i, part in enumerate(book.problem.targets):
         model = models[part.name]
         draws = model.belief(seasons, campaign.file.seed, "odds").draws
         fresh = odds_part(model, book, part, chosen[part.name], draws, windows, campaign)
         slots = [book.slots[int(k)] for k in fresh.slots]
-        luck = [clear[campaign.setup(s.setup).site_slug][:, s.night_index] for s in slots]
-        success = np.stack(luck, axis=1) if luck else np.zeros((seasons, 0), bool)
+        success = good_looks(campaign, slots, good, station_rng, seasons)
         rng = np.random.default_rng([*rng_seed.generate_state(2).tolist(), i])
         found[part.name] = simulate_odds(fresh, success, rng)
     return found
@@ -209,8 +240,40 @@ def unreachable(goal: LearnGoal, feature: FeatureModel, best: float, share: floa
     else:
         text = f"nothing you can schedule reaches {goal.to}: every slot of the season together gives {best:.3g}"
         text += f" {goal.to.unit}" if goal.to.unit else ""
-    if feature.kind == "ring" and goal.learn in ("depth_pc", "distance_pc"):
-        return text + "; ring radii leave depth and distance tied: ask for depth_over_distance2, or bring a distance"
+    tie = _tie_of(feature, goal.learn)
+    if tie:
+        return f"{text}; {tie}"
     if feature.kind == "pair" and goal.learn in ("angle_deg", "beta"):
         return text + "; both rates leave speed and angle tied to the distance: ask for beta_cos, or bring a distance"
     return text + "; ask for less, start earlier, or add a setup with a finer image"
+
+
+def _tie_of(feature: FeatureModel, learn: str) -> str:
+    """Why an echo does not give a quantity alone, and what would; empty for quantities without such a tie."""
+    if isinstance(feature, ArcletModel):
+        ties = {
+            "age_yr": "place and motion leave age and inclination of the dust tied: narrow the slope's law",
+            "distance_pc": "the motion gives distance only together with age and inclination: bring a distance",
+            "source_direction_deg": "the direction of motion is turned by inclined dust: narrow slope_across_sigma",
+        }
+        return ties.get(learn, "")
+    if not isinstance(feature, RingModel):
+        return ""
+    ties = {
+        ("sheet", "depth_pc"): _DEPTH_TIE,
+        ("sheet", "distance_pc"): _DEPTH_TIE,
+        ("shell", "distance_pc"): _SHELL_TIE,
+        ("shell", "shell_radius_pc"): _SHELL_TIE,
+        ("screen", "dust_distance_pc"): _SCREEN_TIE,
+        ("screen", "source_distance_pc"): _SCREEN_TIE,
+        ("filled", "distance_pc"): "the angle of highest polarisation is known to a few degrees only: "
+        "narrow peak_sigma_deg, or bring a distance",
+    }
+    if feature.shape.kind == "screen" and feature.shape.distance is None:
+        return ""
+    return ties.get((feature.shape.kind, learn), "")
+
+
+_DEPTH_TIE = "ring radii leave depth and distance tied: ask for depth_over_distance2, or bring a distance"
+_SHELL_TIE = "a young ring leaves radius and distance tied: look around the day it stands still, or bring a distance"
+_SCREEN_TIE = "ring radii give 1/dust distance - 1/source distance only: bring one of the two"

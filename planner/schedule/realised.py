@@ -2,7 +2,7 @@
 
 Expected information stops paying once a goal is met on average; a plan that must also survive lost nights wants
 more looks than that. Sets for it are found by pricing with every chance cut down (as if more looks were lost than
-will be), and judged by their expected realised value.
+will be) and by growing them by their realised gain, and judged by their expected realised value.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ import numpy as np
 from planner.records import Floats, Ints
 from planner.schedule.columns import price_columns, slot_costs
 from planner.schedule.pricing import Room, TargetPricer
+from planner.schedule.realised_pricing import RealisedPricer
 from planner.schedule.steps import Work
 from planner.schedule.utility import draw_luck, realised_utilities, value_of, weights
 
@@ -32,15 +33,14 @@ class Realised:
         self._luck: dict[int, Floats] = {}
         self._utilities: dict[int, Floats] = {}
         self._careful: dict[tuple[int, float], TargetPricer] = {}
+        self._honest_pricers: dict[int, RealisedPricer] = {}
 
     def utilities(self, number: int) -> Floats:
         """Expected realised utility of each goal with the looks of a column, (G,)."""
         if number not in self._utilities:
             column = self.pool.columns[number]
             part = self.work.problem.targets[column.target]
-            if column.target not in self._luck:
-                self._luck[column.target] = draw_luck(self.work.seed, column.target, part.slots.size)
-            self._utilities[number] = realised_utilities(part, column.slots, self._luck[column.target])
+            self._utilities[number] = realised_utilities(part, column.slots, self._lucky(column.target))
         return self._utilities[number]
 
     def value(self, number: int) -> float:
@@ -109,6 +109,19 @@ class Realised:
             self._careful[key] = TargetPricer(part, target, usual.kept, usual.spacing)
         return self._careful[key]
 
+    def _honest(self, target: int) -> RealisedPricer:
+        """A pricer that counts what a set is expected to realise."""
+        if target not in self._honest_pricers:
+            usual = self.work.pricers[target]
+            self._honest_pricers[target] = RealisedPricer(usual, self._lucky(target))
+        return self._honest_pricers[target]
+
+    def _lucky(self, target: int) -> Floats:
+        if target not in self._luck:
+            slots = self.work.problem.targets[target].slots.size
+            self._luck[target] = draw_luck(self.work.seed, target, slots)
+        return self._luck[target]
+
     def _more_columns(self, costs: Floats) -> None:
         work = self.work
         for t, part in enumerate(work.problem.targets):
@@ -119,6 +132,8 @@ class Realised:
                 pricer = self._pricer(t, factor)
                 for start in (pricer.grow(local), self.pool.columns[work.plan[t]].slots):
                     self.pool.add(work.pricers[t].column(pricer.improve(local, start)))
+            grown = self._honest(t).grow(local, self.pool.columns[work.plan[t]].slots)
+            self.pool.add(work.pricers[t].column(grown))
 
     def _least_gain(self, target: int) -> float:
         return _LEAST_GAIN * float(weights(self.work.problem.targets[target]).sum())
@@ -133,8 +148,8 @@ class Realised:
             used = np.bincount(problem.allocation[others], problem.charge[others], minlength=problem.limits.size)
             room = Room(problem.limits - used, problem.allocation[part.slots], problem.charge[part.slots])
             free = np.full(part.slots.size, self._least_gain(t))
-            for factor in _CAREFUL:
-                chosen = self._pricer(t, factor).grow(free, self.pool.columns[work.plan[t]].slots, room)
+            for pricer in (*(self._pricer(t, factor) for factor in _CAREFUL), self._honest(t)):
+                chosen = pricer.grow(free, self.pool.columns[work.plan[t]].slots, room)
                 number = self.pool.add(work.pricers[t].column(chosen))
                 choice = (*work.plan[:t], number, *work.plan[t + 1 :])
                 more = len(chosen) - len(self.pool.columns[work.plan[t]].slots)

@@ -16,9 +16,9 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 from zoneinfo import ZoneInfo
 
-from planner.campaign.records import Allocation, ArraySite, Campaign, SetupRef, Target
+from planner.campaign.records import Allocation, ArraySite, Campaign, SetupRef, SpacecraftSite, Target
 from planner.errors import PlanningError, RecountError
-from planner.schedule import recount_limits, recount_sky
+from planner.schedule import recount_arrays, recount_further, recount_limits, recount_sky
 from planner.schedule.recount_rows import SECONDS, Row, Tally
 from planner.units import DAY_S, date_of_mjd, iso_of_mjd, mjd_of_iso
 
@@ -72,6 +72,11 @@ def recount(
     _nights(campaign, rows, tally)
     recount_limits.cameras(rows, tally)
     recount_limits.arrays(rows, tally, tracks or {})
+    recount_limits.spacecraft(rows, tally)
+    recount_arrays.sessions(rows, tally)
+    recount_arrays.shared_stations(rows, tally)
+    for row in rows:
+        recount_further.calendar(row, tally)
     _exposures(rows, tally)
     _overlaps(rows, tally)
     _spacings(rows, tally)
@@ -187,7 +192,7 @@ def _nights_of(row: Row) -> tuple[dt.date, ...]:
     before. An array's is the UTC date at the middle; a look over midnight may bear either date, since the
     middle of the transit can lie on the other side of it from the middle of the look.
     """
-    if isinstance(row.setup.site, ArraySite):
+    if isinstance(row.setup.site, ArraySite | SpacecraftSite):
         dates = [date_of_mjd(m) for m in (row.middle, row.start, row.end)]
         return tuple(dict.fromkeys(dates))
     local = _utc(row.start).astimezone(ZoneInfo(row.setup.site.time_zone))
@@ -208,7 +213,8 @@ def _exposures(rows: Sequence[Row], tally: Tally) -> None:
         camera = row.setup.camera
         if camera is not None and row.fixed is None:
             frames = math.ceil(row.exposure_s / camera.longest_exposure_s - 1e-6)
-            overhead = camera.acquisition_min * 60.0 + frames * camera.readout_s
+            overhead = (camera.acquisition_min + camera.calibration_min) * 60.0 + camera.filter_change_s
+            overhead += frames * camera.readout_s
         if row.exposure_s > row.minutes * 60.0 - overhead + SECONDS:
             extra = f" and overheads of {overhead:.0f} s" if overhead else ""
             tally.breaches.append(

@@ -10,11 +10,13 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from planner.campaign.records import ArraySite, Site
+from planner.campaign.records import ArraySite, Site, SpacecraftSite
 from planner.errors import PlanningError
+from planner.schedule.recount_arrays import inside_mount
+from planner.schedule.recount_further import further_limits
 from planner.schedule.recount_rows import ANGLE_DEG, LIT, SECONDS, STEP_MIN, Row, Tally
-from planner.schedule.recount_sky import Sight, directions, look_over, sun_distance
-from planner.units import iso_of_mjd
+from planner.schedule.recount_sky import Sight, directions, look_over, moon_lit, sun_distance
+from planner.units import iso_of_mjd, mjd_of_date
 
 if TYPE_CHECKING:
     from planner.records import Track
@@ -28,11 +30,12 @@ def _moments(row: Row) -> Floats:
     return np.linspace(row.start, row.end, 2 * max(1, math.ceil(row.minutes / 2.0 / STEP_MIN)) + 1)
 
 
-def _by_site(rows: Sequence[Row], *, array: bool) -> Iterable[list[Row]]:
+def _by_site(rows: Sequence[Row], kind: type[Site] | type[ArraySite] | type[SpacecraftSite]) -> Iterable[list[Row]]:
     groups: dict[str, list[Row]] = defaultdict(list)
     for row in rows:
-        if row.setup.is_array == array:
-            groups[row.setup.site_slug].append(row)
+        if isinstance(row.setup.site, kind):
+            part = row.setup.name.partition("@")[2]  # a subarray has stations of its own
+            groups[f"{row.setup.site_slug}@{part}"].append(row)
     return groups.values()
 
 
@@ -49,7 +52,7 @@ def cameras(rows: Sequence[Row], tally: Tally) -> None:
     lowest: list[tuple[float, str]] = []
     moon: list[tuple[float, str]] = []
     sun: list[tuple[float, str]] = []
-    for group in _by_site(rows, array=False):
+    for group in _by_site(rows, Site):
         site = group[0].setup.site
         assert isinstance(site, Site)  # _by_site sorts by it
         moments = [_moments(row) for row in group]
@@ -64,7 +67,7 @@ def cameras(rows: Sequence[Row], tally: Tally) -> None:
         for row, mjd, end in zip(group, moments, ends, strict=True):
             part = slice(end - mjd.size, end)
             _camera_limits(row, site, mjd, sight, part, tally)
-            tally.sky[id(row)] = _sky_class(site, sight, part)
+            tally.sky[id(row)] = _sky_class(row, site, sight, part)
             lowest.append((float(sight.altitude[part].min()), str(row)))
             moon.append((float(sight.moon_separation[part].min()), str(row)))
             sun.append((float(sight.sun_altitude[part].max()), str(row)))
@@ -82,9 +85,10 @@ def _camera_limits(row: Row, site: Site, mjd: Floats, sight: Sight, part: slice,
     say = _teller(row, mjd, tally)
     say("altitude", sight.altitude[part], camera.lowest_altitude_deg, +1, "lowest altitude")
     say("altitude", sight.altitude[part], floor, +1, "the horizon there")
-    say("Sun altitude", sight.sun_altitude[part], camera.sun_below_deg, -1, "highest Sun")
+    say("Sun altitude", sight.sun_altitude[part], camera.sun_limit_deg, -1, "highest Sun")
     say("Sun distance", sight.sun_separation[part], camera.sun_no_closer_deg, +1, "Sun keep-out")
     say("Moon distance", sight.moon_separation[part], camera.moon_no_closer_deg, +1, "closest Moon")
+    further_limits(row, site, mjd, sight, part, say, tally)
 
 
 def _teller(row: Row, mjd: Floats, tally: Tally) -> Callable[..., None]:
@@ -102,12 +106,24 @@ def _teller(row: Row, mjd: Floats, tally: Tally) -> Callable[..., None]:
     return say
 
 
-def _sky_class(site: Site, sight: Sight, part: slice) -> str:
-    """Darkest class that the Moon allows within tolerance; it counts while it is above the horizon."""
+def _sky_class(row: Row, site: Site, sight: Sight, part: slice) -> str:
+    """Darkest class that the Moon allows within tolerance; it counts while it is above the horizon.
+
+    By night: what is lit at local mean midnight counts, wherever the Moon stands.
+    """
+    if site.sky_classes.by == "night":
+        east = math.remainder(site.longitude_deg, 360.0) / 360.0
+        midnight = mjd_of_date(row.night) + 1.0 - east
+        around = midnight + np.array([-1.0, 0.0, 1.0])  # the night may be named after either date at its middle
+        lit = float(moon_lit(around[[int(np.argmin(np.abs(around - row.middle)))]])[0]) - LIT
+        return _class_of(lit, site)
     up = sight.moon_altitude[part] > ANGLE_DEG
     if not up.any():
         return "dark"
-    lit = float(sight.moon_lit[part][up].max()) - LIT
+    return _class_of(float(sight.moon_lit[part][up].max()) - LIT, site)
+
+
+def _class_of(lit: float, site: Site) -> str:
     if lit < site.sky_classes.dark_below:
         return "dark"
     return "grey" if lit < site.sky_classes.grey_below else "bright"
@@ -116,7 +132,7 @@ def _sky_class(site: Site, sight: Sight, part: slice) -> str:
 def arrays(rows: Sequence[Row], tally: Tally, tracks: Mapping[tuple[str, str], Track]) -> None:
     """Enough stations at every moment, and the Sun, for array looks."""
     fewest: list[tuple[int, str]] = []
-    for group in _by_site(rows, array=True):
+    for group in _by_site(rows, ArraySite):
         array = group[0].setup.site
         assert isinstance(array, ArraySite)  # _by_site sorts by it
         moments = [_moments(row) for row in group]
@@ -136,13 +152,32 @@ def arrays(rows: Sequence[Row], tally: Tally, tracks: Mapping[tuple[str, str], T
         tally.checks.append("fewest stations up during an array look: {}, {}".format(*min(fewest)))
 
 
+def spacecraft(rows: Sequence[Row], tally: Tally) -> None:
+    """The angle to the Sun of every look with a spacecraft; its sky is dark."""
+    widest: list[tuple[float, float]] = []
+    for group in _by_site(rows, SpacecraftSite):
+        for row in group:
+            site = row.setup.site
+            assert isinstance(site, SpacecraftSite)  # _by_site sorts by it
+            mjd = _moments(row)
+            angle = sun_distance([row.target.position] * mjd.size, mjd)
+            say = _teller(row, mjd, tally)
+            say("Sun angle", angle, site.sun_angle_deg[0], +1, "smallest allowed")
+            say("Sun angle", angle, site.sun_angle_deg[1], -1, "largest allowed")
+            tally.sky[id(row)] = "dark"
+            widest.append((float(angle.min()), float(angle.max())))
+    if widest:
+        low, high = min(a for a, _ in widest), max(b for _, b in widest)
+        tally.checks.append(f"Sun angle of spacecraft looks: {low:.2f} to {high:.2f} deg")
+
+
 def _stations_up(array: ArraySite, positions: Sequence[Any], mjd: Floats) -> Bools:
     """Whether each station sees the target, (S, T)."""
     seen = np.zeros((len(array.stations), mjd.size), dtype=bool)
     for i, station in enumerate(array.stations):
         altitude, azimuth = directions(positions, mjd, station.longitude_deg, station.latitude_deg, station.height_m)
         lowest = np.maximum(station.lowest_elevation_deg, horizon_deg(station.horizon, azimuth))
-        seen[i] = altitude >= lowest - ANGLE_DEG
+        seen[i] = (altitude >= lowest - ANGLE_DEG) & inside_mount(station, positions, mjd)
     return seen
 
 

@@ -71,6 +71,28 @@ def directions(
         return np.asarray(target.alt.deg), np.asarray(target.az.deg)
 
 
+def hour_angle_and_declination(
+    positions: Sequence[Position], mjd: Floats, longitude_deg: float, latitude_deg: float, height_m: float
+) -> tuple[Floats, Floats]:
+    """Local hour angle (-180 to 180) and declination of date of each moment's target, degrees, (T,) each."""
+    with offline():
+        from astropy.coordinates import HADec
+
+        time, here = _place(mjd, longitude_deg, latitude_deg, height_m)
+        seen = _target(positions, mjd).transform_to(HADec(obstime=time, location=here))
+        return (np.asarray(seen.ha.deg) + 180.0) % 360.0 - 180.0, np.asarray(seen.dec.deg)
+
+
+def moon_lit(mjd: Floats) -> Floats:
+    """Illuminated fraction of the Moon as seen from the Earth's centre, (T,)."""
+    with offline():
+        from astropy.coordinates import get_body, get_sun
+        from astropy.time import Time
+
+        time = Time(mjd, format="mjd", scale="utc")
+        return _lit(get_sun(time).cartesian, get_body("moon", time, ephemeris="builtin").cartesian)
+
+
 def sun_distance(positions: Sequence[Position], mjd: Floats) -> Floats:
     """Distance of each moment's target from the Sun as seen from the Earth's centre, degrees, (T,)."""
     with offline():

@@ -8,20 +8,20 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from planner.campaign.records import Allocation, Campaign, FixedLook, LearnGoal, LooksGoal, SetupRef, Site, Target
+from planner.campaign.records import Allocation, Campaign, FixedLook, LearnGoal, LooksGoal, SetupRef, Target
 from planner.errors import PlanningError
-from planner.instruments import camera
 from planner.prediction.knots import KnotModel
-from planner.prediction.look import LookErrors, look_errors
-from planner.prediction.look_rings import CameraSky, camera_seconds, fwhm_arcsec
+from planner.prediction.look import LookErrors
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.quantities import wanted
-from planner.records import SKY_CLASSES, Floats, Ints, Mode, Slot, Windows
+from planner.records import SKY_CLASSES, Floats, Ints, Slot, Windows
+from planner.schedule.candidates import Batch, batches, errors_of, good_share, mode_of, one_a_night, shutter_seconds
 from planner.schedule.problem import CountPart, GoalPart, LearnPart, Problem, TargetPart
 from planner.units import mjd_of_date, mjd_of_iso
 
 LEAST_CHANCE = 0.02  # a slot that could measure something in fewer draws than this is left out
 CHANCE_DRAWS = 256  # draws for the minutes and the chances of a slot (standard error of a chance: 3 %)
+LEAST_OF_MODES_DAYS = 0.5  # spacing counts whole nights: any number up to 1 keeps looks on different nights
 _ALLOWED = {"dark": 0, "grey": 1, "any": 2}  # darkest class code that an allocation accepts
 
 
@@ -48,46 +48,6 @@ class SlotBook:
     window_rows: Ints  # (K,) row of ``Windows`` that each slot lies in
     columns: Mapping[str, Ints]  # coordinates of each target that the problem's parts keep
     goals: Mapping[str, tuple[tuple[FeatureModel, LearnGoal | LooksGoal], ...]]
-
-
-@dataclass(frozen=True)
-class _Batch:
-    """Candidate looks of one target with one setup: (T,) each."""
-
-    setup: SetupRef
-    rows: Ints  # window rows
-    mjd: Floats
-    seconds: Floats
-    minutes: Floats
-    sky: CameraSky | None
-
-
-def camera_sky(site: Site, setup: SetupRef, windows: Windows, rows: Ints) -> CameraSky:
-    """Conditions at the best moment of each window."""
-    assert setup.camera is not None
-    airmass = windows.airmass[rows]
-    return CameraSky(
-        fwhm_arcsec(site, airmass), airmass, windows.sky_mag_arcsec2[rows], site.extinction_mag[setup.camera.filter]
-    )
-
-
-def _batch(model: TargetModel, setup: SetupRef, windows: Windows, rows: Ints, theta: Floats) -> _Batch:
-    mjd = windows.best_mjd[rows]
-    if setup.receiver is not None:
-        track = windows.tracks[(model.target.name, setup.name)]
-        seconds = np.full(len(rows), track.look_hours * 3600.0 * setup.receiver.on_source)
-        return _Batch(setup, rows, mjd, seconds, np.full(len(rows), track.look_hours * 60.0), None)
-    assert setup.camera is not None
-    assert isinstance(setup.site, Site)
-    sky = camera_sky(setup.site, setup, windows, rows)
-    seconds = np.ceil(camera_seconds(model, theta, mjd, setup.camera, sky, setup.name) / 60.0) * 60.0
-    minutes = np.ceil(camera.look_minutes(setup.camera, seconds))
-    return _Batch(setup, rows, mjd, seconds, minutes, sky)
-
-
-def _errors(model: TargetModel, theta: Floats, batch: _Batch, windows: Windows) -> LookErrors:
-    track = windows.tracks.get((model.target.name, batch.setup.name))
-    return look_errors(model, theta, batch.mjd, batch.setup, sky=batch.sky, seconds=batch.seconds, track=track)
 
 
 @dataclass(frozen=True)
@@ -147,45 +107,50 @@ class SlotBuilder:
         loss.sky += len(np.unique(windows.night[rows])) - len(np.unique(windows.night[allowed]))
         if not len(allowed):
             return []
-        batch = _batch(model, setup, windows, allowed, chance_draws)
-        keep = _one_a_night(windows, batch)
-        loss.short += len(np.unique(windows.night[allowed])) - len(keep)
-        if not len(keep):
-            return []
-        batch = _take(batch, keep)
-        wide = _errors(model, chance_draws, batch, windows)
-        chance = wide.measurable.any(axis=-1).mean(axis=0)
-        for block in wide.blocked:
-            loss.reasons[f"{block.feature}: {block.reason}"] = float(block.mask.mean())
-        good = np.flatnonzero(chance >= LEAST_CHANCE)
-        loss.unmeasurable += len(keep) - len(good)
-        if not len(good):
-            return []
-        return self._slots(model, a, setup, _take(batch, good), chance[good], _best_snr(wide)[good], plan_draws)
+        long_enough: set[int] = set()
+        measured: set[int] = set()
+        found: list[_Found] = []
+        for mode in batches(model, setup, windows, allowed, chance_draws):
+            batch = mode.at(one_a_night(mode))
+            if not len(batch.rows):
+                continue
+            wide = errors_of(model, chance_draws, batch)
+            chance = wide.measurable.any(axis=-1).mean(axis=0)
+            for block in wide.blocked:
+                loss.reasons[f"{block.feature}: {block.reason}"] = float(block.mask.mean())
+            good = np.flatnonzero(chance >= LEAST_CHANCE)
+            long_enough |= set(batch.nights.tolist())
+            measured |= set(batch.nights[good].tolist())
+            if len(good):
+                found += self._slots(model, a, setup, batch.at(good), chance[good], _best_snr(wide)[good], plan_draws)
+        loss.short += len(np.unique(windows.night[allowed])) - len(long_enough)
+        loss.unmeasurable += len(long_enough) - len(measured)
+        return found
 
     def _slots(
         self,
         model: TargetModel,
         a: int,
         setup: SetupRef,
-        batch: _Batch,
+        batch: Batch,
         chance: Floats,
         snr: Floats,
         plan_draws: Floats,
     ) -> list[_Found]:
         w = self.windows
-        errors = _errors(model, plan_draws, batch, w)
+        errors = errors_of(model, plan_draws, batch)
         rows = errors.whiten(model.derivatives(plan_draws, batch.mjd, setup.name))  # (B, T, M, P)
         usable = errors.measurable.astype(float)  # (B, T, F)
+        stations = 1.0 if batch.track is None else batch.track.chance_stations
         found = []
         for i, row in enumerate(batch.rows):
             slot = Slot(
                 number=-1, target=model.target.name, setup=setup.name, telescope=setup.telescope,
                 night=w.nights[w.night[row]], night_index=int(w.night[row]), allocation=a,
-                mode=mode_of(setup, float(batch.seconds[i]), float(batch.minutes[i])),
-                earliest_start_mjd=float(w.start_mjd[row]), latest_end_mjd=float(w.end_mjd[row]),
-                best_mjd=float(w.best_mjd[row]),
-                chance_clear=clear_share(setup, w.nights[w.night[row]]), chance_measurable=float(chance[i]),
+                mode=mode_of(setup, float(batch.seconds[i]), float(batch.minutes[i]), batch.share),
+                earliest_start_mjd=float(batch.earliest_mjd[i]), latest_end_mjd=float(batch.latest_mjd[i]),
+                best_mjd=float(batch.mjd[i]), chance_stations=stations,
+                chance_clear=good_share(setup, w.nights[w.night[row]]) * stations, chance_measurable=float(chance[i]),
                 expected_snr=float(snr[i]), airmass=float(w.airmass[row]),
                 moon_separation_deg=float(w.moon_separation_deg[row]), sky_class=int(w.sky_class[row]),
             )  # fmt: skip
@@ -215,10 +180,12 @@ class SlotBuilder:
         ]  # fmt: skip
         if not accounts:
             raise PlanningError(f"{where}: no allocation accepts a {SKY_CLASSES[w.sky_class[inside[0]]]} sky there")
-        batch = _take(_batch(model, setup, w, inside[:1], chance_draws), np.array([0]))
-        seconds = batch.seconds if setup.is_array else np.array([_shutter_seconds(setup, look.minutes)])
-        batch = _Batch(setup, batch.rows, np.array([(start + end) / 2]), seconds, np.array([look.minutes]), batch.sky)
-        wide = _errors(model, chance_draws, batch, w)
+        offered = [b for b in batches(model, setup, w, inside[:1], chance_draws) if len(b.rows)]
+        batch = min(offered, key=lambda b: abs(float(b.minutes[0]) - look.minutes))
+        seconds = batch.seconds if setup.is_array else np.array([shutter_seconds(setup, look.minutes)])
+        middle = np.array([(start + end) / 2])
+        batch = replace(batch, mjd=middle, seconds=seconds, minutes=np.array([look.minutes]))
+        wide = errors_of(model, chance_draws, batch)
         chance = wide.measurable.any(axis=-1).mean(axis=0)
         (found,) = self._slots(model, accounts[0], setup, batch, chance, _best_snr(wide), plan_draws)
         slot = replace(
@@ -244,7 +211,10 @@ class SlotBuilder:
         goals = tuple(
             LearnPart(g.name, g.weight, g.gradient[:, keep], g.wanted) if isinstance(g, LearnPart) else g for g in goals
         )
-        spacing = model.target.spacing
+        # modes of one night are alternatives, even where looks may follow one another within a night
+        at_least = model.target.spacing.at_least_days
+        if any(item.slot.mode.share != 1.0 for item in found):
+            at_least = max(at_least, LEAST_OF_MODES_DAYS)
         return TargetPart(
             name=model.target.name,
             prior_precision=np.asarray(np.linalg.inv(covariance[np.ix_(keep, keep)]), dtype=np.float64),
@@ -253,7 +223,7 @@ class SlotBuilder:
             chance=np.array([item.slot.chance_clear for item in found], dtype=float),
             rows=np.ascontiguousarray(rows[..., keep]),
             middle_mjd=np.array([mjd_of_date(item.slot.night) for item in found], dtype=float),  # spacing counts nights
-            at_least_days=spacing.at_least_days,
+            at_least_days=at_least,
             at_most_days=largest_gap_days(model, plan_draws),
             forced=np.array([item.forced for item in found], dtype=bool),
         )
@@ -340,54 +310,8 @@ def largest_gap_days(model: TargetModel, draws: Floats) -> float:
     return max(gap, model.target.spacing.at_least_days + 1.0)
 
 
-def clear_share(setup: SetupRef, night: str) -> float:
-    """Chance of a clear night in the month of a night's label."""
-    return float(setup.site.months.clear[int(night[5:7]) - 1])
-
-
-def mode_of(setup: SetupRef, seconds: float, minutes: float) -> Mode:
-    """Describe how a look is taken."""
-    if setup.receiver is not None:
-        band = f"{setup.receiver.ghz:g} GHz"
-        return Mode(f"{band} {minutes / 60.0:.3g} h", band, seconds, minutes, 1)
-    assert setup.camera is not None
-    frames = int(camera.frames_for(setup.camera, seconds))
-    return Mode(
-        f"{setup.camera.filter} {frames}x{seconds / frames:.0f} s", setup.camera.filter, seconds, minutes, frames
-    )
-
-
-def _one_a_night(windows: Windows, batch: _Batch) -> Ints:
-    """Positions of the interval to use on each night: long enough, then the fewest minutes, then the earliest."""
-    fits = windows.minutes[batch.rows] >= batch.minutes
-    best: dict[int, int] = {}
-    for i in np.flatnonzero(fits):
-        night = int(windows.night[batch.rows[i]])
-        if night not in best or batch.minutes[i] < batch.minutes[best[night]] - 1e-9:
-            best[night] = int(i)
-    return np.array(sorted(best.values()), dtype=np.int64)
-
-
-def _take(batch: _Batch, which: Ints) -> _Batch:
-    sky = batch.sky
-    if sky is not None:
-        sky = CameraSky(sky.fwhm_arcsec[which], sky.airmass[which], sky.sky_mag_arcsec2[which], sky.extinction_mag)
-    return _Batch(batch.setup, batch.rows[which], batch.mjd[which], batch.seconds[which], batch.minutes[which], sky)
-
-
 def _best_snr(errors: LookErrors) -> Floats:
     return np.median(errors.snr.max(axis=-1), axis=0)
-
-
-def _shutter_seconds(setup: SetupRef, minutes: float) -> float:
-    assert setup.camera is not None
-    c = setup.camera
-    per_frame = c.longest_exposure_s + c.readout_s
-    open_s = (minutes - c.acquisition_min) * 60.0
-    if open_s <= c.readout_s:
-        raise PlanningError(f"a fixed look of {minutes:g} minutes is shorter than its overheads; lengthen it")
-    frames = math.ceil(open_s / per_frame)
-    return open_s - frames * c.readout_s
 
 
 def setup_targets(campaign: Campaign, target: Target) -> list[SetupRef]:

@@ -11,7 +11,7 @@ covariance of neighbouring nights is r sqrt(p_n q_n p_(n-1) q_(n-1)), i.e. their
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 
@@ -67,6 +67,20 @@ def simulate_weather(shares: Floats, persistence: float, seasons: int, rng: np.r
         before = luck[:, night] < np.where(before, after_clear[night], after_cloudy[night])
         clear[:, night] = before
     return clear
+
+
+def weather_roots(links: Mapping[str, str | None]) -> dict[str, str]:
+    """Site whose random numbers each site takes: the first by name of those that are linked, directly or in a chain.
+
+    ``links``: site -> the site it says it has the weather with; names that are not among the sites link as well.
+    """
+    group = {name: {name} for pair in links.items() for name in pair if name is not None}
+    for one, other in links.items():
+        if other is not None and group[one] is not group[other]:
+            group[one] |= group[other]
+            for name in group[other]:
+                group[name] = group[one]
+    return {name: min(n for n in group[name] if n in links) for name in links}
 
 
 def _check_shares(shares: Floats) -> None:

@@ -25,9 +25,9 @@ for command in (check, forecast, windows, plan, report, demo):
 
 def _version(wanted: bool) -> None:
     if wanted:
-        from importlib.metadata import version
+        import planner
 
-        print(f"lightlag {version('lightlag')}")
+        print(f"lightlag {planner.__version__}")
         raise typer.Exit
 
 

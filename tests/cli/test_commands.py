@@ -8,6 +8,7 @@ import shutil
 import subprocess
 import sys
 from pathlib import Path
+from typing import Any
 
 import pytest
 
@@ -20,16 +21,12 @@ COMMANDS = ("check", "forecast", "windows", "plan", "report", "demo")
 
 
 @pytest.fixture(scope="module")
-def finished(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, str]:
-    """The demo, run once as a user runs it: its folder and what it printed."""
-    where = tmp_path_factory.mktemp("demo")
-    done = subprocess.run(
-        [sys.executable, "-m", "planner", "demo", "--seconds", "5"], cwd=where, capture_output=True, text=True,
-        env={**os.environ, "COLUMNS": "100", "PYTHONPATH": str(Path(__file__).resolve().parents[2])}, check=False,
-    )  # fmt: skip
-    assert done.returncode == 0, done.stderr
-    assert all(line.startswith("lightlag: note: ") for line in done.stderr.splitlines()), done.stderr
-    return where / "lightlag-demo", done.stdout
+def finished(demo_run: Any) -> tuple[Path, str]:
+    """The demo, run once for the whole suite: its folder and what it printed."""
+    assert demo_run.code == 0, demo_run.errors
+    notes = [line for line in demo_run.errors.splitlines() if line.strip()]
+    assert all(line.startswith("lightlag: note: ") for line in notes), demo_run.errors
+    return demo_run.folder, demo_run.output
 
 
 def test_the_demo_writes_page_plan_and_figures(finished: tuple[Path, str]) -> None:

@@ -3,6 +3,8 @@
 IAUC = IAU Circular. Depths, dates, radii and distances are as printed there; what is from memory says so.
 The clock of SN 1987A starts at optical maximum, 1987 May 20 (the month is in ESO press release 8802, 1988;
 the day is from memory).
+Values were read on the page of the arXiv number, circular or abstract named beside them unless marked; authors'
+names, years and journal pages beside those are from memory.
 """
 
 from __future__ import annotations

@@ -1,4 +1,8 @@
-"""Speeds and scales at cosmological distance, and the factor 1 + z."""
+"""Speeds and scales at cosmological distance, and the factor 1 + z.
+
+Values were read on the page of the arXiv number, circular or abstract named beside them unless marked; authors'
+names, years and journal pages beside those are from memory.
+"""
 
 from __future__ import annotations
 

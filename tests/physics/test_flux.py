@@ -1,4 +1,8 @@
-"""Fading, spectra, boosting and flux ratios of knots."""
+"""Fading, spectra, boosting and flux ratios of knots.
+
+Values were read on the page of the arXiv number, circular or abstract named beside them unless marked; authors'
+names, years and journal pages beside those are from memory.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,8 @@
-"""One knot and a pair of knots: closed forms, published pairs, properties, refusals."""
+"""One knot and a pair of knots: closed forms, published pairs, properties, refusals.
+
+Values were read on the page of the arXiv number, circular or abstract named beside them unless marked; authors'
+names, years and journal pages beside those are from memory.
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,8 @@
-"""Paths, precession, ejection dates, core shift and sampling of knots."""
+"""Paths, precession, ejection dates, core shift and sampling of knots.
+
+Values were read on the page of the arXiv number, circular or abstract named beside them unless marked; authors'
+names, years and journal pages beside those are from memory.
+"""
 
 from __future__ import annotations
 

@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
+import os
 import time
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from planner.campaign.reading import read_campaign
-from planner.campaign.records import Campaign
+from planner.campaign.records import Campaign, Target
 from planner.errors import RecountError
 from planner.records import (
     Account,
@@ -58,20 +59,22 @@ class Prepared:
 def prepare(campaign: Campaign, progress: Progress = silent) -> Prepared:
     """Build tracks, models and beliefs."""
     from planner.prediction.model import build_model
-    from planner.prediction.tracks import track_of
+    from planner.prediction.tracks import beams_beside, track_of
     from planner.schedule.slots import setup_targets
 
     tracks: dict[tuple[str, str], Track] = {}
     models, beliefs = {}, {}
     for i, target in enumerate(campaign.targets):
         progress("belief", i / len(campaign.targets))
-        beams = {}
+        beams: dict[str, float] = {}
+        companion_beams: dict[str, float] = {}
         for setup in setup_targets(campaign, target):
             if setup.is_array:
                 track = tracks[(target.name, setup.name)] = track_of(target, setup)
                 if track.hours_up > 0:
                     beams[setup.name] = float(np.sqrt(track.beam_major_mas * track.beam_minor_mas))
-        model = models[target.name] = build_model(campaign, target, beams)
+                    companion_beams |= beams_beside(target, setup, track)
+        model = models[target.name] = build_model(campaign, target, companion_beams | beams)
         beliefs[target.name] = model.belief(FORECAST_DRAWS, campaign.file.seed, "forecast")
     progress("belief", 1.0)
     return Prepared(tracks, models, beliefs)
@@ -94,28 +97,49 @@ def forecast(campaign: Campaign, *, progress: Progress = silent) -> Forecast:
 
 
 def _forecast(campaign: Campaign, ready: Prepared, progress: Progress) -> Forecast:
+    from concurrent.futures import ThreadPoolExecutor
+
     from planner.prediction.curves import target_forecast
     from planner.schedule.slots import setup_targets
 
     nights = night_middles(campaign)
-    found: list[TargetForecast] = []
-    for i, target in enumerate(campaign.targets):
-        progress("forecast", i / len(campaign.targets))
+
+    def one(target: Target) -> TargetForecast:
         setups = setup_targets(campaign, target)
-        found.append(
-            target_forecast(ready.models[target.name], ready.beliefs[target.name], nights, setups, ready.tracks)
-        )
-    progress("forecast", 1.0)
+        return target_forecast(ready.models[target.name], ready.beliefs[target.name], nights, setups, ready.tracks)
+
+    progress("forecast", 0.0)
+    found: list[TargetForecast] = []
+    # threads: the work is in numpy, which lets others run meanwhile; targets know nothing of one another
+    with ThreadPoolExecutor(max_workers=min(8, os.cpu_count() or 1)) as pool:
+        for i, made in enumerate(pool.map(one, campaign.targets)):
+            found.append(made)
+            progress("forecast", (i + 1) / len(campaign.targets))
     labels = tuple(day.isoformat() for day in campaign.nights)
     return Forecast(campaign.name, labels, nights, tuple(found))
 
 
-def windows(campaign: Campaign, *, progress: Progress = silent) -> Windows:
-    """Find where and when each target can be observed, with a ledger of the hours lost to each limit."""
+def windows(
+    campaign: Campaign, *, extra: Mapping[str, Sequence[Any]] | None = None, progress: Progress = silent
+) -> Windows:
+    """Find where and when each target can be observed, with a ledger of the hours lost to each limit.
+
+    ``extra``: further limits by setup, objects made with astroplan's limits; slow, and good to some minutes only.
+    """
     from planner.prediction.tracks import track_of
     from planner.sky.windows import find_windows
 
-    return find_windows(campaign, track_of=track_of, progress=progress)
+    return find_windows(campaign, track_of=track_of, extra=extra, progress=progress)
+
+
+def window_hints(campaign: Campaign, found: Windows) -> tuple[tuple[str, str, str], ...]:
+    """(target, setup, what would help) for every pair with little time, other shipped places considered."""
+    from planner.campaign.reading import read_site
+    from planner.campaign.shipped import shipped_folder
+    from planner.sky.what_helps import what_would_help
+
+    profiles = [read_site(path) for path in sorted(shipped_folder("site_profiles").glob("*.yaml"))]
+    return tuple((h.target, h.setup, h.text) for h in what_would_help(campaign, found, profiles))
 
 
 def _windows(campaign: Campaign, ready: Prepared, progress: Progress) -> Windows:
@@ -270,7 +294,9 @@ def understood(campaign: Campaign, *, progress: Progress = silent) -> Understand
 def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understanding:
     from planner.campaign.assumptions import assumptions
     from planner.campaign.in_words import facts_of
+    from planner.instruments.calibration import calibrations
     from planner.prediction.first_answer import answers_of, ties_of
+    from planner.prediction.jet_answers import jet_answers
     from planner.schedule.slots import setup_targets
 
     answers: list[tuple[str, str, str]] = []
@@ -279,12 +305,19 @@ def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understa
     nights = night_middles(campaign)
     for target in campaign.targets:
         one = made.target(target.name)
-        setups = [s.name for s in setup_targets(campaign, target)]
+        model, refs = ready.models[target.name], setup_targets(campaign, target)
         answers += [(target.name, feature, text) for feature, text in answers_of(one, made)]
-        ties += [(target.name, text) for text in ties_of(ready.models[target.name], nights, setups)]
+        draws = ready.beliefs[target.name].draws
+        told = jet_answers(model, draws, nights, refs, ready.tracks)
+        answers += [(target.name, feature, text) for feature, text in told]
+        ties += [(target.name, text) for text in ties_of(model, nights, [s.name for s in refs])]
         warnings += list(one.warnings)
     return Understanding(
-        tuple(facts_of(campaign)), tuple(assumptions(campaign)), tuple(answers), tuple(ties), tuple(warnings)
+        (*facts_of(campaign), *calibrations(campaign)),
+        tuple(assumptions(campaign)),
+        tuple(answers),
+        tuple(ties),
+        tuple(warnings),
     )
 
 

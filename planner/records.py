@@ -111,6 +111,20 @@ class Measurable:
 
 
 @dataclass(frozen=True)
+class Derived:
+    """What is believed of one quantity that follows from the parameters, such as an apparent speed."""
+
+    feature: str
+    quantity: str  # the word by which a goal asks for it
+    unit: str  # "MJD" for dates
+    quantiles: Floats  # (5,) 5, 16, 50, 84, 95 % over draws in which it exists
+    exists: float = 1.0  # share of draws in which it exists
+
+    def __post_init__(self) -> None:
+        lock(self)
+
+
+@dataclass(frozen=True)
 class TargetForecast:
     """Forecast of one target."""
 
@@ -118,6 +132,7 @@ class TargetForecast:
     bands: tuple[Band, ...]
     measurable: tuple[Measurable, ...]
     warnings: tuple[str, ...]  # model assumptions that fail, each with its number
+    derived: tuple[Derived, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -152,7 +167,9 @@ class Track:
     beam_major_mas: float  # FWHM, nan if the target is never up
     beam_minor_mas: float
     beam_pa_deg: float
-    noise_jy: float  # image noise of the look
+    noise_jy: float  # image noise of the look, with the stations that may be expected to take part
+    chance_stations: float = 1.0  # expected share of the look in which enough stations take part
+    noise_by_month_jy: tuple[float, ...] = ()  # 12 (January first) where the months' opacities differ, else none
 
 
 @dataclass(frozen=True)
@@ -170,7 +187,11 @@ class Ledger:
         lock(self)
 
 
-LIMITS = ("daylight and twilight", "shutdown", "altitude", "Sun keep-out", "Moon")
+LIMITS = (
+    "daylight and twilight", "shutdown", "not mounted", "busy", "altitude", "airmass", "zenith blind spot",
+    "hour angle", "declination", "parallactic angle", "template match", "Sun keep-out", "Sun angle", "Moon distance",
+    "Moon up", "Moon light", "extra constraints",
+)  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -226,6 +247,7 @@ class Mode:
     exposure_s: float  # shutter open (or on source), the whole look
     minutes: float  # of the telescope, overheads included
     frames: int
+    share: float = 1.0  # length, as a multiple of the setup's plain look
 
 
 @dataclass(frozen=True)
@@ -253,6 +275,7 @@ class Slot:
     moon_separation_deg: float
     sky_class: int
     fixed_look: int | None = None  # index into the campaign's fixed looks
+    chance_stations: float = 1.0  # part of ``chance_clear`` that is not weather
 
 
 class State(Enum):

@@ -289,7 +289,6 @@ def test_what_is_reached_is_not_called_out_of_reach(demo_run: DemoRun) -> None:
             assert goal.remark == ""
 
 
-
 def test_a_goal_counts_as_reached_by_its_simulated_odds_alone(demo_run: DemoRun) -> None:
     goals = demo_run.results.plan.goals
     assert any(goal.reached for goal in goals)

@@ -9,6 +9,7 @@ from typing import Any
 
 from planner.campaign.base import Record
 from planner.campaign.faults import field_name
+from planner.campaign.laws import Law
 from planner.campaign.presets import CAMERAS, RECEIVERS, Preset
 from planner.campaign.records import (
     ArraySite,
@@ -17,9 +18,11 @@ from planner.campaign.records import (
     Receiver,
     SetupRef,
     Site,
+    SpacecraftSite,
     Target,
     feature_kind,
 )
+from planner.campaign.spacecraft import GROUND_ONLY
 from planner.errors import Place
 
 
@@ -38,7 +41,7 @@ class Assumption:
     place: Place
 
 
-def assumptions(record: Campaign | Target | Site | ArraySite | SetupRef) -> list[Assumption]:
+def assumptions(record: Campaign | Target | Site | ArraySite | SpacecraftSite | SetupRef) -> list[Assumption]:
     """List what was left out of a campaign (targets, sites and the setups it uses), or of one part of it.
 
     A field counts when it was declared with ``assumed``, or was filled by a preset.
@@ -50,7 +53,7 @@ def assumptions(record: Campaign | Target | Site | ArraySite | SetupRef) -> list
         return list(_of_target(record))
     if isinstance(record, SetupRef):
         return list(_of_setup(record))
-    words = "array" if isinstance(record, ArraySite) else "site"
+    words = "array" if isinstance(record, ArraySite) else "spacecraft" if isinstance(record, SpacecraftSite) else "site"
     return list(_of_site(record, f"{words} {record.name}"))
 
 
@@ -71,9 +74,11 @@ def _of_target(target: Target) -> Iterator[Assumption]:
     if target.redshift is None:
         idle.add("cosmology")
     if "ring" not in kinds:
-        idle |= {"plate_scale_sigma", "centre_sigma_arcsec"}
-    if kinds == {"ring"}:
-        idle.add("core_wander_beam")
+        idle.add("plate_scale_sigma")
+    if not kinds & {"ring", "arclet"}:
+        idle.add("centre_sigma_arcsec")
+    if kinds <= {"ring", "arclet"}:
+        idle |= {"core_wander_beam", "core_shift_mas_ghz", "flux_scale_fraction"}
     here = _Here(f"target {target.name}", target, ())
     yield from _walk(target, here, frozenset(idle))
     for i, feature in enumerate(target.features):
@@ -81,19 +86,22 @@ def _of_target(target: Target) -> Iterator[Assumption]:
         yield from _walk(feature, _Here(owner, target, ("features", i)), frozenset())
 
 
-def _of_site(site: Site | ArraySite, owner: str) -> Iterator[Assumption]:
+def _of_site(site: Site | ArraySite | SpacecraftSite, owner: str) -> Iterator[Assumption]:
     """The place itself; its setups are listed one by one, and only those in use."""
-    idle = {"telescopes", "receivers"}
+    idle = {"telescopes", "receivers", "setups"}
     if isinstance(site, ArraySite):
-        idle.add("seeing_arcsec")  # radio images do not feel it
+        idle |= {"seeing_arcsec", "thin_cloud", "thin_cloud_mag"}  # radio does not feel them
     yield from _walk(site, _Here(owner, site, ()), frozenset(idle))
 
 
 def _of_setup(setup: SetupRef) -> Iterator[Assumption]:
     owner, name = f"setup {setup.name}", setup.name.split("/", 1)[1]
     if setup.receiver is not None:
-        yield from _walk(setup.receiver, _Here(owner, setup.site, ("receivers", name)), frozenset())
-    if setup.camera is not None:
+        yield from _walk(setup.receiver, _Here(owner, setup.site, ("receivers", name.partition("@")[0])), frozenset())
+    if setup.camera is not None and isinstance(setup.site, SpacecraftSite):
+        idle = frozenset(GROUND_ONLY)
+        yield from _walk(setup.camera, _Here(owner, setup.site, ("setups", name)), idle)
+    elif setup.camera is not None:
         telescope = setup.telescope.split("/", 1)[1]
         here = _Here(owner, setup.site, ("telescopes", telescope, "setups", name))
         yield from _walk(setup.camera, here, frozenset())
@@ -104,7 +112,7 @@ class _Here:
     """Where a record stands: its owner in words, the file, and the owner's keys in it."""
 
     owner: str
-    file: Target | Site | ArraySite
+    file: Target | Site | ArraySite | SpacecraftSite
     keys: tuple[str | int, ...]
 
     def assumption(self, inner: tuple[str | int, ...], value: Any, why: str) -> Assumption:
@@ -158,6 +166,8 @@ def _words(value: Any) -> str:
         return "yes" if value else "no"
     if isinstance(value, float):
         return f"{value:g}"
+    if isinstance(value, Law):
+        return value.words()
     if isinstance(value, Record):
         pairs = ((name, getattr(value, name)) for name in type(value).model_fields)
         return ", ".join(f"{name} {_words(item)}" for name, item in pairs if item is not None)

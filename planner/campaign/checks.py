@@ -7,8 +7,18 @@ import math
 import os
 from collections.abc import Iterator
 
+from planner.campaign.array_setups import find_receiver
+from planner.campaign.echo_checks import echo_errors
 from planner.campaign.faults import field_name, joined
-from planner.campaign.records import AnySite, ArraySite, Campaign, CampaignFile, FixedLook, SetupRef
+from planner.campaign.records import (
+    AnySite,
+    ArraySite,
+    Campaign,
+    CampaignFile,
+    FixedLook,
+    SetupRef,
+    SpacecraftSite,
+)
 from planner.errors import InputError, UnknownName
 from planner.units import date_of_mjd, mjd_of_iso
 
@@ -21,7 +31,7 @@ def check_files(file: CampaignFile) -> None:
 def check_campaign(campaign: Campaign) -> None:
     """Check the files against each other: names of targets, weights, fixed looks."""
     _raise(list(_twin_targets(campaign)))
-    _raise([*_weights(campaign), *_fixed_looks(campaign)])
+    _raise([*_weights(campaign), *_fixed_looks(campaign), *echo_errors(campaign)])
     _raise(list(_overlaps(campaign)))
 
 
@@ -32,23 +42,23 @@ def find_setup(file: CampaignFile, allocation: int, site: AnySite) -> SetupRef:
     keys = ("allocations", allocation, "setup")
     place, field = file.source.place(*keys), field_name(keys)
     if isinstance(site, ArraySite):
-        if name not in site.receivers:
-            raise UnknownName(name, site.receivers, what=f"receiver of {slug}", place=place, field=field)
-        able = sum(name in station.sefd_jy for station in site.stations)
-        if able < site.least_stations:
-            raise InputError(
-                f"only {able} stations of {slug} have a sefd_jy for {name!r}, fewer than its least_stations "
-                f"{site.least_stations}; add sefd_jy in {site.source.path} or lower least_stations",
-                place=place,
-                field=field,
-                value=full,
-            )
-        receiver = site.receivers[name]
-        return SetupRef(full, slug, site, slug, receiver=receiver, receiver_name=name)
+        return find_receiver(file, allocation, site)
+    if isinstance(site, SpacecraftSite):
+        if name not in site.setups:
+            raise UnknownName(name, site.setups, what=f"setup of {slug}", place=place, field=field)
+        return SetupRef(full, slug, site, slug, site.setups[name])
     for telescope, record in site.telescopes.items():
         if name in record.setups:
-            shutdowns = record.shutdowns
-            return SetupRef(full, slug, site, f"{slug}/{telescope}", record.setups[name], shutdowns=shutdowns)
+            return SetupRef(
+                full,
+                slug,
+                site,
+                f"{slug}/{telescope}",
+                record.setups[name],
+                shutdowns=record.shutdowns,
+                busy=record.busy,
+                mounted=record.mounted.get(name),
+            )
     permitted = [setup for telescope in site.telescopes.values() for setup in telescope.setups]
     raise UnknownName(name, permitted, what=f"setup of {slug}", place=place, field=field)
 
@@ -147,12 +157,12 @@ def _fixed_looks(campaign: Campaign) -> Iterator[InputError]:
 
 
 def evening_date(look: FixedLook, setup: SetupRef) -> dt.date:
-    """The night a fixed look belongs to: the civil date at the site's evening, for an array the UTC date.
+    """The night a fixed look belongs to: the civil date at the site's evening; UTC date for arrays and spacecraft.
 
     The site's mean solar time stands for its civil time; the two part at noon only, when no one observes.
     """
     mjd = mjd_of_iso(look.start_utc.isoformat())
-    if isinstance(setup.site, ArraySite):
+    if isinstance(setup.site, ArraySite | SpacecraftSite):
         return date_of_mjd(mjd)
     east = math.remainder(setup.site.longitude_deg, 360.0)
     return date_of_mjd(mjd + east / 360.0 - 0.5)

@@ -9,20 +9,28 @@ from pydantic import BeforeValidator, Field, ValidationInfo, field_validator
 from pydantic_core import InitErrorDetails
 
 from planner.campaign.base import Record, assumed, fault, raise_faults, unknown, unknown_error
-from planner.campaign.quantities import QUANTITIES, Kind, Tolerance, in_unit_of, read_tolerance
+from planner.campaign.quantities import QUANTITIES, Kind, Quantity, Tolerance, in_unit_of, read_tolerance
 from planner.errors import nearest
 
 
 class LearnGoal(Record):
     """A quantity wanted to a precision (one standard deviation, half the 16-84 % width).
 
-    ``to`` is kept in percent or in the quantity's own unit, whatever unit was written.
+    ``to`` is kept in percent or in the quantity's own unit, whatever unit was written. ``at_ghz`` asks for the
+    crossing of the core as seen at another frequency.
     """
 
     learn: str
     to: Annotated[Tolerance, BeforeValidator(read_tolerance)]
+    at_ghz: float | None = Field(default=None, gt=0)
     odds: float = assumed(0.8, "a goal counts as reached when its simulated odds are 80 % or more", gt=0, lt=1)
     weight: float | None = Field(default=None, gt=0)
+
+    @property
+    def words(self) -> str:
+        """The goal in the user's words."""
+        at = "" if self.at_ghz is None else f" at {self.at_ghz:g} GHz"
+        return f"{self.learn}{at} to {self.to}"
 
     @field_validator("learn")
     @classmethod
@@ -36,6 +44,13 @@ class LearnGoal(Record):
     def _unit(cls, value: Tolerance, info: ValidationInfo) -> Tolerance:
         name = info.data.get("learn")
         return in_unit_of(value, QUANTITIES[name]) if name else value
+
+    @field_validator("at_ghz")
+    @classmethod
+    def _frequency(cls, value: float | None, info: ValidationInfo) -> float | None:
+        if value is not None and info.data.get("learn") not in ("core_crossing", None):
+            raise ValueError(f"got {value:g}, but only core_crossing depends on a frequency; leave at_ghz out")
+        return value
 
 
 class LooksGoal(Record):
@@ -85,8 +100,11 @@ def goal_faults(kind: Kind, goals: tuple[Any, ...], feature: Record) -> Iterator
         if kind not in quantity.features:
             mine = [q.name for q in QUANTITIES.values() if kind in q.features]
             owners = " or a ".join(quantity.features)
-            text = f"{goal.learn!r} belongs to a {owners}, not to a {kind}"
+            article = "an" if kind == "arclet" else "a"
+            text = f"{goal.learn!r} belongs to a {owners}, not to {article} {kind}"
             yield fault(("goals", i, "learn"), text, goal.learn, allowed=", ".join(mine))
+        elif quantity.shapes and kind == "ring" and feature.dust.shape not in quantity.shapes:  # type: ignore[attr-defined]
+            yield _wrong_shape(i, quantity, feature.dust.shape)  # type: ignore[attr-defined]
         elif goal.to.unit == "%" and quantity.positive_with and not _positive(feature, quantity.positive_with):
             path = ".".join(quantity.positive_with)
             text = (
@@ -95,6 +113,13 @@ def goal_faults(kind: Kind, goals: tuple[Any, ...], feature: Record) -> Iterator
                 f"write it in {quantity.unit}, or give {path} a prior above 0 such as lognormal"
             )
             yield fault(("goals", i, "to"), text, str(goal.to))
+
+
+def _wrong_shape(i: int, quantity: Quantity, shape: str) -> InitErrorDetails:
+    """Say that rings of this shape of dust do not have a quantity, and which they have."""
+    mine = [q.name for q in QUANTITIES.values() if "ring" in q.features and shape in (q.shapes or (shape,))]
+    text = f"{quantity.name!r} belongs to dust of shape {' or '.join(quantity.shapes)}, not to a {shape}"
+    return fault(("goals", i, "learn"), text, quantity.name, allowed=", ".join(mine))
 
 
 def _positive(feature: Record, path: tuple[str, ...]) -> bool:

@@ -12,7 +12,7 @@ from planner.campaign.goals import LearnGoal, LooksGoal
 from planner.campaign.laws import Law
 from planner.campaign.records import Campaign, Target
 
-SKIPPED = {"source", "goals", "features", "target", "invented", "note"}  # said elsewhere
+SKIPPED = {"source", "curve", "goals", "features", "target", "invented", "note"}  # said elsewhere
 
 
 def facts_of(campaign: Campaign) -> list[tuple[str, str, str]]:
@@ -32,7 +32,7 @@ def goal_words(goal: LearnGoal | LooksGoal) -> str:
     """A goal in the user's words."""
     if isinstance(goal, LooksGoal):
         return f"{goal.looks} usable epochs"
-    return f"{goal.learn} to {goal.to}"
+    return goal.words
 
 
 def _target_words(campaign: Campaign, target: Target) -> str:
@@ -49,17 +49,18 @@ def _written(value: Any, name: str = "", *, skip: str = "") -> Iterator[str]:
     if isinstance(value, Law):
         yield f"{name} {value.words()}"
     elif isinstance(value, BaseModel):
-        for key in type(value).model_fields:
+        for key, field in type(value).model_fields.items():
             if key in value.model_fields_set and key not in SKIPPED:
                 inner = getattr(value, key)
                 if isinstance(inner, str) and inner == skip:
                     continue
-                yield from _written(inner, f"{name}.{key}".lstrip("."))
+                yield from _written(inner, f"{name}.{field.alias or key}".lstrip("."))
     elif isinstance(value, Mapping):
         for key, inner in value.items():
             yield from _written(inner, f"{name}.{key}")
     elif isinstance(value, (list, tuple)):
-        yield f"{name} {' to '.join(_short(v) for v in value)}" if len(value) == 2 else f"{name} ({len(value)} entries)"
+        pair = len(value) == 2 and not any(isinstance(v, BaseModel) for v in value)
+        yield f"{name} {' to '.join(_short(v) for v in value)}" if pair else f"{name} ({len(value)} entries)"
     elif value is not None:
         yield f"{name} {_short(value)}"
 

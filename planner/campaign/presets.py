@@ -63,25 +63,30 @@ CAMERAS: Mapping[str, Preset] = {
 
 RECEIVERS: Mapping[str, Preset] = {
     "5ghz_cooled": Preset(
-        "cooled receiver at 5 GHz", _BAND, {"ghz": 5.0, "bandwidth_mhz": 256.0, "on_source": 0.8}
+        "cooled receiver at 5 GHz", _BAND,
+        {"ghz": 5.0, "opacity": 0.008, "system_k": 35.0, "bandwidth_mhz": 256.0, "on_source": 0.8}
     ),
     "8ghz_cooled": Preset(
-        "cooled receiver at 8.4 GHz", _BAND, {"ghz": 8.4, "bandwidth_mhz": 256.0, "on_source": 0.8}
+        "cooled receiver at 8.4 GHz", _BAND,
+        {"ghz": 8.4, "opacity": 0.01, "system_k": 40.0, "bandwidth_mhz": 256.0, "on_source": 0.8}
     ),
     "15ghz_cooled": Preset(
-        "cooled receiver at 15 GHz", _BAND, {"ghz": 15.4, "bandwidth_mhz": 256.0, "on_source": 0.75}
+        "cooled receiver at 15 GHz", _BAND,
+        {"ghz": 15.4, "opacity": 0.02, "system_k": 55.0, "bandwidth_mhz": 256.0, "on_source": 0.75}
     ),
     "22ghz_cooled": Preset(
-        "cooled receiver at 22 GHz", _BAND, {"ghz": 22.2, "bandwidth_mhz": 256.0, "on_source": 0.7}
+        "cooled receiver at 22 GHz", _BAND,
+        {"ghz": 22.2, "opacity": 0.06, "system_k": 70.0, "bandwidth_mhz": 256.0, "on_source": 0.7}
     ),
     "43ghz_cooled": Preset(
-        "cooled receiver at 43 GHz", _BAND, {"ghz": 43.1, "bandwidth_mhz": 256.0, "on_source": 0.6}
+        "cooled receiver at 43 GHz", _BAND,
+        {"ghz": 43.1, "opacity": 0.07, "system_k": 90.0, "bandwidth_mhz": 256.0, "on_source": 0.6}
     ),
     "86ghz_cooled": Preset(
         "cooled receiver at 86 GHz", _BAND,
         {
-            "ghz": 86.2, "bandwidth_mhz": 512.0, "on_source": 0.5, "dynamic_range": 200.0,
-            "position_floor_beam": 0.1,
+            "ghz": 86.2, "opacity": 0.1, "system_k": 130.0, "bandwidth_mhz": 512.0,
+            "on_source": 0.5, "dynamic_range": 200.0, "position_floor_beam": 0.1,
         },
     ),
 }  # fmt: skip

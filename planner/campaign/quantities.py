@@ -10,7 +10,7 @@ from typing import Any, Literal
 
 from planner.units import LY_PC, YEAR_DAYS
 
-Kind = Literal["ring", "knot", "pair"]
+Kind = Literal["ring", "arclet", "knot", "pair"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,7 +30,7 @@ class Quantity:
 
     ``unit`` is the one unit used inside ("" for a pure number); ``positive`` says that every possible value
     is above 0, so that percent means something; ``positive_with`` is the key path, inside the feature, of a
-    prior that must be positive too for that.
+    prior that must be positive too for that. ``shapes``: the shapes of dust whose rings have it (none: all).
     """
 
     name: str
@@ -39,6 +39,7 @@ class Quantity:
     positive: bool
     words: str
     positive_with: tuple[str, ...] = ()
+    shapes: tuple[str, ...] = ()
 
 
 def _table(*rows: Quantity) -> dict[str, Quantity]:
@@ -48,26 +49,38 @@ def _table(*rows: Quantity) -> dict[str, Quantity]:
 _SHEET = ("dust", "depth_pc")  # a sheet may lie behind the source: its depth is then below 0
 
 QUANTITIES: Mapping[str, Quantity] = _table(
-    Quantity("depth_over_distance2", ("ring",), "1/pc", True, "sheet depth over distance squared", _SHEET),
-    Quantity("depth_pc", ("ring",), "pc", True, "sheet depth before the source", _SHEET),
-    Quantity("distance_pc", ("ring",), "pc", True, "distance of the source"),
-    Quantity("slope_east", ("ring",), "", False, "slope of the sheet toward east"),
-    Quantity("slope_north", ("ring",), "", False, "slope of the sheet toward north"),
+    Quantity("depth_over_distance2", ("ring",), "1/pc", True, "sheet depth over distance squared", _SHEET, ("sheet",)),
+    Quantity("depth_pc", ("ring",), "pc", True, "sheet depth before the source", _SHEET, ("sheet",)),
+    Quantity("distance_pc", ("ring", "arclet"), "pc", True, "distance of the source", (), ("sheet", "shell", "filled")),
+    Quantity("slope_east", ("ring",), "", False, "slope of the sheet toward east", (), ("sheet",)),
+    Quantity("slope_north", ("ring",), "", False, "slope of the sheet toward north", (), ("sheet",)),
     # A tilt is never below 0 but may be 0, where a fraction of it means nothing.
-    Quantity("tilt_deg", ("ring",), "deg", False, "tilt of the sheet against the sky"),
+    Quantity("tilt_deg", ("ring",), "deg", False, "tilt of the sheet against the sky", (), ("sheet",)),
+    Quantity("shell_radius_pc", ("ring",), "pc", True, "radius of the shell", (), ("shell",)),
+    Quantity("dust_distance_pc", ("ring",), "pc", True, "distance of the dust from the observer", (), ("screen",)),
+    Quantity("source_distance_pc", ("ring",), "pc", True, "distance of the source behind a screen", (), ("screen",)),
+    Quantity("age_yr", ("arclet",), "yr", True, "age of the outburst when the arclet was seen"),
+    Quantity("source_direction_deg", ("arclet",), "deg", False, "position angle of the source as seen from the arclet"),
     Quantity("apparent_speed_c", ("knot",), "c", True, "apparent speed in units of the speed of light"),
     Quantity("speed_mas_yr", ("knot",), "mas/yr", True, "angular speed"),
     Quantity("pa_deg", ("knot", "pair"), "deg", False, "position angle of the motion"),
     Quantity("core_crossing", ("knot",), "d", False, "date on which the knot crossed the core"),
     Quantity("min_lorentz_factor", ("knot",), "", True, "smallest Lorentz factor that allows the speed"),
+    Quantity("largest_angle_deg", ("knot",), "deg", True, "largest angle to the line of sight that allows the speed"),
+    Quantity("doppler_factor", ("knot",), "", True, "Doppler factor"),
+    Quantity("lorentz_factor", ("knot",), "", True, "Lorentz factor"),
+    Quantity("separation_mas", ("knot",), "mas", True, "mean separation of a stationary feature"),
+    Quantity("period_days", ("knot",), "d", True, "observed period of the nozzle"),
+    Quantity("half_angle_deg", ("knot",), "deg", True, "half angle of the nozzle's cone"),
+    Quantity("inclination_deg", ("knot",), "deg", True, "angle between the nozzle's axis and the line of sight"),
     # Above 0 because the approaching knot is the faster one; ``PairMotion`` sees to that.
     Quantity("beta_cos", ("pair",), "", True, "true speed times cosine of the angle to the line of sight"),
     Quantity("approaching_mas_d", ("pair",), "mas/d", True, "angular speed of the approaching knot"),
     Quantity("receding_mas_d", ("pair",), "mas/d", True, "angular speed of the receding knot"),
-    Quantity("ejection", ("pair",), "d", False, "date of the ejection"),
+    Quantity("ejection", ("knot", "pair"), "d", False, "date of the ejection"),
     Quantity("largest_distance_kpc", ("pair",), "kpc", True, "largest distance that the two speeds allow"),
-    Quantity("angle_deg", ("pair",), "deg", True, "angle between motion and line of sight"),
-    Quantity("beta", ("pair",), "", True, "true speed in units of the speed of light"),
+    Quantity("angle_deg", ("knot", "pair"), "deg", True, "angle between motion and line of sight"),
+    Quantity("beta", ("knot", "pair"), "", True, "true speed in units of the speed of light"),
 )
 
 # How many of the unit used inside one written unit is. Lengths by way of pc, rates by way of mas/yr.
@@ -89,6 +102,8 @@ UNITS: Mapping[str, Mapping[str, float]] = {
     "": {"": 1.0},
     "c": {"c": 1.0},
     "d": _TIMES_D,
+    "yr": {unit: size / YEAR_DAYS for unit, size in _TIMES_D.items()},
+    "mas": {"mas": 1.0, "uas": 1e-3, "arcsec": 1e3},
     "deg": _ANGLES_DEG,
     "pc": _LENGTHS_PC,
     "kpc": {unit: size / 1e3 for unit, size in _LENGTHS_PC.items()},

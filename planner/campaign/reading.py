@@ -8,10 +8,22 @@ from typing import TypeVar
 
 from pydantic import ValidationError
 
+from planner.campaign.array_setups import share_stations
 from planner.campaign.base import FileRecord, Source
+from planner.campaign.calendar_file import read_calendar
 from planner.campaign.checks import check_campaign, check_files, find_setup
 from planner.campaign.faults import input_error, joined, shown
-from planner.campaign.records import AnySite, ArraySite, Campaign, CampaignFile, SetupRef, Site, Target
+from planner.campaign.light_curves import read_light_curve
+from planner.campaign.records import (
+    AnySite,
+    ArraySite,
+    Campaign,
+    CampaignFile,
+    SetupRef,
+    Site,
+    SpacecraftSite,
+    Target,
+)
 from planner.campaign.shipped import shipped_folder
 from planner.campaign.yaml_text import read_yaml
 from planner.errors import InputError, Place, UnknownName, nearest
@@ -31,7 +43,7 @@ def read_campaign(path: str | Path) -> Campaign:
     file = _read(CampaignFile, file_path)
     check_files(file)
     targets = tuple(
-        read_target(os.path.join(folder, name), _named_by(file, i, j))
+        read_target(os.path.join(folder, name), _named_by(file, i, j), folder)
         for i, programme in enumerate(file.programmes)
         for j, name in enumerate(programme.targets)
     )
@@ -39,32 +51,74 @@ def read_campaign(path: str | Path) -> Campaign:
     for i, allocation in enumerate(file.allocations):
         if allocation.site_slug not in sites:
             sites[allocation.site_slug] = _find_site(folder, file, i)
+    _check_weather(folder, sites)
     setups = _setups(file, sites)
     campaign = Campaign(folder=folder, file=file, targets=targets, sites=sites, setups=setups)
     check_campaign(campaign)
     return campaign
 
 
-def read_target(path: str | Path, named_by: Place | None = None) -> Target:
-    """Read one target file; ``named_by`` is where another file names it, for the message if it is missing."""
-    _must_exist(os.fspath(path), named_by, "target file")
-    return _read(Target, os.fspath(path))
+def read_target(path: str | Path, named_by: Place | None = None, folder: str | None = None) -> Target:
+    """Read one target file; ``named_by`` is where another file names it, for the message if it is missing.
+
+    ``folder``: where its light curve is looked for; the file's own folder unless given.
+    """
+    place = os.fspath(path)
+    _must_exist(place, named_by, "target file")
+    data, source = read_yaml(Path(place), place)
+    return _record(Target, _with_light_curve(data, source, folder or os.path.dirname(place)), source)
+
+
+def _with_light_curve(data: object, source: Source, folder: str) -> object:
+    """Put the table that an outburst names beside its name; a name that is no text is left to the record."""
+    outburst = data.get("outburst") if isinstance(data, dict) else None
+    if not isinstance(outburst, dict) or not isinstance(outburst.get("light_curve"), str) or "curve" in outburst:
+        return data
+    path = os.path.join(folder, outburst["light_curve"])
+    curve = read_light_curve(path, source.place("outburst", "light_curve"))
+    return {**data, "outburst": {**outburst, "curve": curve}}  # type: ignore[dict-item]
 
 
 def read_site(path: str | Path) -> AnySite:
-    """Read one site file: a place with telescopes (``site:``) or an array of antennas (``array:``)."""
+    """Read one site file: a place with telescopes (``site:``), an array (``array:``) or a ``spacecraft:``."""
     place = os.fspath(path)
     data, source = read_yaml(Path(path), place)
     if not isinstance(data, dict):
         raise InputError(f"got {shown(data)}, needs a mapping of fields", place=source.place())
-    kinds = [key for key in ("site", "array") if key in data]
+    kinds = [key for key in _SITE_KINDS if key in data]
     if len(kinds) != 1:
-        text = "has both 'site' and 'array'" if kinds else "has neither 'site' nor 'array'"
-        near = [key for key in data if not kinds and nearest(key, ("site", "array"))]
+        words = [repr(key) for key in kinds or _SITE_KINDS]
+        joint = f"{', '.join(words[:-1])} {'and' if kinds else 'nor'} {words[-1]}"
+        text = f"has {'both' if len(kinds) == 2 else 'all of'} {joint}" if kinds else f"has neither {joint}"
+        near = [key for key in data if not kinds and nearest(key, _SITE_KINDS)]
         if near:
-            raise UnknownName(near[0], ("site", "array"), what="key", place=source.place(near[0]), field=near[0])
+            raise UnknownName(near[0], _SITE_KINDS, what="key", place=source.place(near[0]), field=near[0])
         raise InputError(f"{text}; a site file has one of them", place=source.place())
-    return _record(ArraySite, data, source) if kinds == ["array"] else _record(Site, data, source)
+    if kinds == ["spacecraft"]:
+        return _record(SpacecraftSite, data, source)
+    return (
+        _record(ArraySite, data, source) if kinds == ["array"] else _record(Site, _with_calendars(data, source), source)
+    )
+
+
+_SITE_KINDS = ("site", "array", "spacecraft")
+
+
+def _with_calendars(data: dict[str, object], source: Source) -> dict[str, object]:
+    """Add the events of each telescope's calendar file to its ``busy``; what has a wrong shape is left alone."""
+    telescopes = data.get("telescopes")
+    if not isinstance(telescopes, dict):
+        return data
+    found = {}
+    for name, record in telescopes.items():
+        found[name] = record
+        if isinstance(record, dict) and isinstance(record.get("busy_file"), str):
+            path = Path(source.path).parent / record["busy_file"]
+            events = read_calendar(path, source.place("telescopes", name, "busy_file"))
+            own = record.get("busy") or []
+            if isinstance(own, list):
+                found[name] = {**record, "busy": [*own, *events]}
+    return {**data, "telescopes": found}
 
 
 def _locate(path: str) -> tuple[str, str]:
@@ -137,6 +191,18 @@ def _find_site(folder: str, file: CampaignFile, allocation: int) -> AnySite:
     )
 
 
+def _check_weather(folder: str, sites: dict[str, AnySite]) -> None:
+    """A site that has the weather of another names one that there is, used in this campaign or not."""
+    known = set(sites)
+    for place in (Path(folder, "sites"), shipped_folder("site_profiles")):
+        known |= {p.stem for p in place.glob("*.yaml")} if place.is_dir() else set()
+    for slug, site in sites.items():
+        other = None if isinstance(site, SpacecraftSite) else site.months.weather_with
+        if other is not None and other not in known - {slug}:
+            keys = ("months", "weather_with")
+            raise UnknownName(other, known - {slug}, what="site", place=site.source.place(*keys), field=".".join(keys))
+
+
 def _setups(file: CampaignFile, sites: dict[str, AnySite]) -> tuple[SetupRef, ...]:
     found: dict[str, SetupRef] = {}
     errors: list[InputError] = []
@@ -149,4 +215,4 @@ def _setups(file: CampaignFile, sites: dict[str, AnySite]) -> tuple[SetupRef, ..
             errors.append(error)
     if errors:
         raise joined(errors)
-    return tuple(found.values())
+    return share_stations(tuple(found.values()))

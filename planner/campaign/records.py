@@ -15,76 +15,123 @@ from typing import Annotated, Literal
 
 from pydantic import Field, field_validator, model_validator
 
+from planner.campaign.arclets import Arclet, ArcletPosition, SeenArclet
+from planner.campaign.arrays import ArraySite, Receiver, Station, Subarray
 from planner.campaign.base import FileRecord, Filter, Name, PlanDay, Record, Source, UtcMoment, assumed
-from planner.campaign.echoes import Outburst, Ring, RingBrightness, SeenRing, SheetDust, Tilt
+from planner.campaign.calendars import Busy, Nights, Shutdown
+from planner.campaign.dust import FilledDust, OwnGrains, ScreenDust, SheetDust, ShellDust, Tilt
+from planner.campaign.echoes import Ring, RingBrightness, SeenRing, Template
+from planner.campaign.exposure import Anchor
 from planner.campaign.goals import Goal, LearnGoal, LooksGoal
-from planner.campaign.jets import Fades, Knot, KnotFlux, KnotMotion, Neighbours, Pair, PairFlux, PairMotion
+from planner.campaign.jet_motion import (
+    CounterMotion,
+    Intrinsic,
+    IntrinsicMotion,
+    LinearMotion,
+    Nozzle,
+    NozzleMotion,
+    StationaryMotion,
+)
+from planner.campaign.jets import (
+    Fades,
+    Knot,
+    KnotFlux,
+    KnotMotion,
+    Neighbours,
+    Pair,
+    PairFlux,
+    PairMotion,
+    Scattering,
+)
+from planner.campaign.light_curves import LightCurve
+from planner.campaign.outbursts import Outburst, Pulse
 from planner.campaign.places import CoreCrossing, Moment, Position
 from planner.campaign.quantities import Tolerance
+from planner.campaign.site_parts import Months, Seeing, Twelve
 from planner.campaign.sites import (
-    AnySite,
-    ArraySite,
     CameraSetup,
-    Months,
-    Receiver,
-    Seeing,
-    Shutdown,
     Site,
     SkyClasses,
-    Station,
     Telescope,
-    Twelve,
 )
-from planner.campaign.targets import Cosmology, Feature, Nuisances, Spacing, Target, feature_kind
+from planner.campaign.sky_limits import MatchTemplate, SkyLimits
+from planner.campaign.spacecraft import AnySite, SpacecraftSite
+from planner.campaign.targets import Cosmology, Feature, NamedCosmology, Nuisances, Spacing, Target, feature_kind
 
 __all__ = [
     "Allocation",
+    "Anchor",
     "AnySite",
+    "Arclet",
+    "ArcletPosition",
     "ArraySite",
+    "Busy",
     "CameraSetup",
     "Campaign",
     "CampaignFile",
     "CoreCrossing",
     "Cosmology",
+    "CounterMotion",
     "Fades",
     "Feature",
     "FileRecord",
+    "FilledDust",
     "Filter",
     "FixedLook",
     "Goal",
+    "Intrinsic",
+    "IntrinsicMotion",
     "Knot",
     "KnotFlux",
     "KnotMotion",
     "LearnGoal",
+    "LightCurve",
+    "LinearMotion",
     "LooksGoal",
+    "MatchTemplate",
     "Moment",
     "Months",
+    "NamedCosmology",
     "Neighbours",
+    "Nights",
+    "Nozzle",
+    "NozzleMotion",
     "Nuisances",
     "Outburst",
+    "OwnGrains",
     "Pair",
     "PairFlux",
     "PairMotion",
     "Position",
     "Programme",
+    "Pulse",
     "Receiver",
     "Record",
     "Ring",
     "RingBrightness",
+    "Scattering",
+    "ScreenDust",
     "Season",
     "Seeing",
+    "SeenArclet",
     "SeenRing",
     "SetupRef",
     "SheetDust",
+    "ShellDust",
     "Shutdown",
     "Site",
     "SkyClasses",
+    "SkyLimits",
     "SkyWord",
     "Source",
+    "SpacecraftSite",
     "Spacing",
     "Station",
+    "StationaryMotion",
+    "Subarray",
     "Target",
     "Telescope",
+    "Template",
     "Tilt",
     "Tolerance",
     "Twelve",
@@ -128,7 +175,7 @@ class Allocation(Record):
     @field_validator("setup")
     @classmethod
     def _two_parts(cls, value: str) -> str:
-        if not re.fullmatch(r"[A-Za-z0-9][\w.+-]*/[A-Za-z0-9][\w.+-]*", value):
+        if not re.fullmatch(r"[A-Za-z0-9][\w.+-]*/[A-Za-z0-9][\w.+-]*(@[A-Za-z0-9][\w.+-]*)?", value):
             raise ValueError(f"got {value!r}; write site/setup, e.g. brack-ridge/wide-camera")
         return value
 
@@ -172,6 +219,8 @@ class SetupRef:
     receiver: Receiver | None = None
     receiver_name: str | None = None
     shutdowns: tuple[Shutdown, ...] = ()
+    busy: tuple[Busy, ...] = ()
+    mounted: tuple[Nights, ...] | None = None  # None: always
 
     @property
     def is_array(self) -> bool:

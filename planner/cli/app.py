@@ -25,9 +25,12 @@ for command in (check, forecast, windows, plan, report, demo):
 
 def _version(wanted: bool) -> None:
     if wanted:
-        import planner
+        from importlib.metadata import PackageNotFoundError, version
 
-        print(f"lightlag {planner.__version__}")
+        try:
+            print(f"lightlag {version('lightlag')}")
+        except PackageNotFoundError:  # run from a source tree that was never installed
+            print("lightlag (not installed)")
         raise typer.Exit
 
 

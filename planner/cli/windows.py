@@ -13,10 +13,11 @@ def windows(folder: Folder, target: OneTarget = None, figures: Figures = None) -
     Example: lightlag windows lightlag-demo
     """
     from planner import flow
-    from planner.cli.show import say, screen, show
+    from planner.cli.show import bullets, say, screen, show
     from planner.cli.waiting import progress_bars
     from planner.errors import UnknownName
     from planner.report import tables
+    from planner.report.words import plain
 
     campaign = flow.read_campaign(folder)
     names = [t.name for t in campaign.targets]
@@ -28,6 +29,8 @@ def windows(folder: Folder, target: OneTarget = None, figures: Figures = None) -
     show(console, tables.windows_season(found, target))
     for table in tables.windows_limits_by_month(found, target) if target else tables.windows_months(found):
         show(console, table)
+    hints = [f"{t} with {s}: {text}" for t, s, text in flow.window_hints(campaign, found) if target in (None, t)]
+    bullets(console, "Little time, and what would help", map(plain, hints))
     if figures is not None:
         from planner.report.gallery import write_figures
 

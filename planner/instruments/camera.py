@@ -37,6 +37,9 @@ def snr(
     background_pixels: ArrayLike = math.inf,
     floor: ArrayLike = 0.0,
     sky_counts: ArrayLike = 1.0,
+    template_s: ArrayLike = math.inf,
+    template_frames: ArrayLike = 1,
+    crowding: ArrayLike = 1.0,
 ) -> Floats:
     """Summed signal-to-noise ratio of a source spread over ``pixels``.
 
@@ -45,15 +48,20 @@ def snr(
     per pixel and frame; ``frames``: m; ``background_pixels``: n_b, pixels from which the sky was taken.
     ``floor``: residual of the sky subtraction that is common to all pixels, share of the sky: it caps the
     S/N. ``sky_counts``: k = 2 for the difference of two images of equal depth (background noise counts
-    twice). All broadcast together. Returns the ratio, 0 at zero time. Raises DomainError for negative input.
+    twice). ``template_s`` and ``template_frames``: a template of the same sky, scaled to this image and subtracted,
+    adds its own noise: t/template_s of the background's growth, and its read noise. ``crowding``: factor on the
+    variance of the background, the template's included. All broadcast together.
+    Returns the ratio, 0 at zero time. Raises DomainError for negative input.
     """
     named = {
         "source_e_s": source_e_s, "sky_e_s_pix": sky_e_s_pix, "seconds": seconds, "pixels": pixels,
         "dark_e_s": dark_e_s, "read_noise_e": read_noise_e, "frames": frames, "floor": floor,
     }  # fmt: skip
     s, b, t, n, dark, read, m, eps = (_not_negative(name, value) for name, value in named.items())
-    slope, still = _background(b, n, dark, read, m, background_pixels, sky_counts)
-    variance = (s + slope) * t + still * (t > 0) + (eps * n * b * t) ** 2
+    crowd = _not_negative("crowding", crowding)
+    slope, still = _background(b, n, dark, read, m, background_pixels, crowd * np.asarray(sky_counts, float))
+    template = crowd * _template(b, n, dark, read, template_frames, background_pixels, template_s)
+    variance = (s + slope) * t + still * (t > 0) + ((eps * n * b) ** 2 + template) * t**2
     signal = np.asarray(s * t + 0.0 * variance)
     ratio = np.divide(signal, np.sqrt(variance), out=np.zeros_like(signal), where=variance != 0)
     return np.asarray(ratio)[()]
@@ -71,20 +79,25 @@ def seconds_for_snr(
     background_pixels: ArrayLike = math.inf,
     floor: ArrayLike = 0.0,
     sky_counts: ArrayLike = 1.0,
+    template_s: ArrayLike = math.inf,
+    template_frames: ArrayLike = 1,
+    crowding: ArrayLike = 1.0,
 ) -> Floats:
     """Seconds after which ``snr`` reaches ``wanted`` with a given number of frames: its inverse, closed form.
 
-    Positive root of (S^2 - q^2 F^2) t^2 - q^2 (S + K) t - q^2 M = 0, with F = floor n B, K the slope of the
-    background variance and M its constant part. nan where the floor (or a source without light) keeps the
-    ratio below ``wanted`` for ever: more time will not help.
+    Positive root of (S^2 - q^2 (F^2 + V)) t^2 - q^2 (S + K) t - q^2 M = 0, with F = floor n B, K the slope of the
+    background variance, M its constant part, V what the template adds. nan where the floor (or the template, or a
+    source without light) keeps the ratio below ``wanted`` for ever: more time will not help.
     """
     named = {
         "wanted": wanted, "source_e_s": source_e_s, "sky_e_s_pix": sky_e_s_pix, "pixels": pixels,
         "dark_e_s": dark_e_s, "read_noise_e": read_noise_e, "frames": frames, "floor": floor,
     }  # fmt: skip
     q, s, b, n, dark, read, m, eps = (_not_negative(name, value) for name, value in named.items())
-    slope, still = _background(b, n, dark, read, m, background_pixels, sky_counts)
-    square = np.asarray(s**2 - (q * eps * n * b) ** 2 + 0.0 * (slope + still))
+    crowd = _not_negative("crowding", crowding)
+    slope, still = _background(b, n, dark, read, m, background_pixels, crowd * np.asarray(sky_counts, float))
+    template = crowd * _template(b, n, dark, read, template_frames, background_pixels, template_s)
+    square = np.asarray(s**2 - q**2 * ((eps * n * b) ** 2 + template) + 0.0 * (slope + still))
     reachable = square > 0
     square = np.where(reachable, square, 1.0)
     linear = q**2 * (s + slope)
@@ -99,9 +112,17 @@ def frames_for(setup: CameraSetup, seconds: ArrayLike) -> Ints:
 
 
 def look_minutes(setup: CameraSetup, seconds: ArrayLike) -> Floats:
-    """Minutes of telescope for ``seconds`` of open shutter: acquisition, exposures, one readout a frame."""
+    """Minutes of telescope for ``seconds`` of open shutter: overheads, exposures, one readout a frame.
+
+    Overheads of a look: acquisition, one change of filter, calibration.
+    """
     t = np.asarray(seconds, dtype=float)
-    return np.asarray(setup.acquisition_min + (t + frames_for(setup, t) * setup.readout_s) / 60.0)[()]
+    return np.asarray(overhead_min(setup) + (t + frames_for(setup, t) * setup.readout_s) / 60.0)[()]
+
+
+def overhead_min(setup: CameraSetup) -> float:
+    """Minutes of a look in which the shutter is closed whatever its length: readouts come on top."""
+    return setup.acquisition_min + setup.calibration_min + setup.filter_change_s / 60.0
 
 
 def image_fwhm_arcsec(seeing_arcsec: ArrayLike, airmass: ArrayLike) -> Floats:
@@ -130,12 +151,16 @@ def ring_snr(
     seconds: ArrayLike,
     *,
     rate_factor: ArrayLike = 1.0,
+    sky_counts: ArrayLike | None = None,
+    template_s: ArrayLike = math.inf,
+    crowding: ArrayLike = 1.0,
 ) -> Floats:
     """Summed S/N of a ring or arc of mean brightness ``mag_arcsec2`` over ``area_arcsec2``.
 
     Difference imaging and the subtraction floor come from ``setup``; ``rate_factor`` scales all light, so
-    that an observatory's own calculator can override our photon count. Returns the broadcast shape of all
-    arrays.
+    that an observatory's own calculator can override our photon count. ``sky_counts`` overrides the setup's
+    own count of the background's noise; ``template_s``, ``crowding``: see ``snr``. Returns the broadcast shape of
+    all arrays.
     """
     source, sky, pixels = _ring_rates(
         setup,
@@ -147,7 +172,7 @@ def ring_snr(
         extinction_mag_airmass,
         rate_factor,
     )
-    return _setup_snr(setup, source, sky, pixels, seconds)
+    return _setup_snr(setup, source, sky, pixels, seconds, sky_counts, template_s, crowding)
 
 
 def ring_seconds(
@@ -161,6 +186,9 @@ def ring_seconds(
     wanted_snr: ArrayLike,
     *,
     rate_factor: ArrayLike = 1.0,
+    sky_counts: ArrayLike | None = None,
+    template_s: ArrayLike = math.inf,
+    crowding: ArrayLike = 1.0,
 ) -> Floats:
     """Open-shutter seconds that bring a ring to ``wanted_snr``; nan where the floor forbids it for ever."""
     source, sky, pixels = _ring_rates(
@@ -173,7 +201,7 @@ def ring_seconds(
         extinction_mag_airmass,
         rate_factor,
     )
-    return _setup_seconds(setup, source, sky, pixels, wanted_snr)
+    return _setup_seconds(setup, source, sky, pixels, wanted_snr, sky_counts, template_s, crowding)
 
 
 def point_snr(
@@ -266,6 +294,21 @@ def _background(
     return weight * (sky + dark), weight * frames * read**2
 
 
+def _template(
+    sky: Floats,
+    pixels: Floats,
+    dark: Floats,
+    read: Floats,
+    frames: ArrayLike,
+    background_pixels: ArrayLike,
+    seconds: ArrayLike,
+) -> Floats:
+    """Variance that a template adds over the whole aperture, in e^2 per squared second of the image."""
+    t, m = _positive("template_s", seconds), _not_negative("template_frames", frames)
+    slope, still = _background(sky, pixels, dark, read, m, background_pixels, 1.0)
+    return slope / t + still / t**2
+
+
 def _ring_rates(
     setup: CameraSetup,
     filter_name: str,
@@ -302,29 +345,43 @@ def _point_rates(
     return factor * share * photons_e_s(setup, filter_name, dimmed), sky, pixels
 
 
-def _noise_of(setup: CameraSetup) -> dict[str, float]:
+def _noise_of(
+    setup: CameraSetup, sky_counts: ArrayLike | None, template_s: ArrayLike, crowding: ArrayLike
+) -> dict[str, ArrayLike]:
+    own = 2.0 if setup.difference_imaging else 1.0
     return {
         "dark_e_s": setup.dark_e_s,
         "read_noise_e": setup.read_noise_e,
         "floor": setup.subtraction_floor,
-        "sky_counts": 2.0 if setup.difference_imaging else 1.0,
+        "sky_counts": own if sky_counts is None else sky_counts,
+        "template_s": template_s,
+        "crowding": crowding,
+        "template_frames": np.maximum(frames_for(setup, np.where(np.isinf(template_s), 0.0, template_s)), 1),
     }
 
 
-def _setup_snr(setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, seconds: ArrayLike) -> Floats:
-    return snr(source, sky, seconds, pixels, frames=frames_for(setup, seconds), **_noise_of(setup))
+def _setup_snr(
+    setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, seconds: ArrayLike,
+    sky_counts: ArrayLike | None = None, template_s: ArrayLike = math.inf, crowding: ArrayLike = 1.0,
+) -> Floats:  # fmt: skip
+    noise = _noise_of(setup, sky_counts, template_s, crowding)
+    return snr(source, sky, seconds, pixels, frames=frames_for(setup, seconds), **noise)
 
 
-def _setup_seconds(setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, wanted: ArrayLike) -> Floats:
+def _setup_seconds(
+    setup: CameraSetup, source: Floats, sky: Floats, pixels: Floats, wanted: ArrayLike,
+    sky_counts: ArrayLike | None = None, template_s: ArrayLike = math.inf, crowding: ArrayLike = 1.0,
+) -> Floats:  # fmt: skip
     """Least time whose own number of frames reaches ``wanted``.
 
     Start with one frame and give each answer the frames it needs until nothing changes. The time grows at
     most as the square root of the frames, so the steps shrink by half or more and the first fixed point is
     the least one.
     """
+    noise = _noise_of(setup, sky_counts, template_s, crowding)
     frames = np.ones((), dtype=np.int64)
     while True:
-        seconds = seconds_for_snr(wanted, source, sky, pixels, frames=frames, **_noise_of(setup))
+        seconds = seconds_for_snr(wanted, source, sky, pixels, frames=frames, **noise)
         needed = np.maximum(frames_for(setup, seconds), 1)
         if np.all(needed <= frames):
             return seconds

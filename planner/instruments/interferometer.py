@@ -23,6 +23,7 @@ Ints = NDArray[np.int64]
 # sqrt(2 ln 2) / (pi sqrt(s)), closed form.
 FWHM_PER_ROOT_MOMENT = math.sqrt(2.0 * math.log(2.0)) / math.pi
 BLENDED_BEAMS = 1.5  # separation below which neighbours disturb each other; common practice, no source
+AIR_K = 265.0  # mean temperature of the emitting air, 250-280 K; from memory
 UNRESOLVED_BEAMS = 0.5  # separation at and below which nothing is learned; common practice, no source
 
 
@@ -118,6 +119,22 @@ def effective_noise_jy(thermal_jy: ArrayLike, core_jy: ArrayLike, dynamic_range:
     return np.hypot(np.asarray(thermal_jy, float), limit)[()]
 
 
+def sefd_factor(elevation_deg: ArrayLike, zenith_opacity: ArrayLike, system_k: ArrayLike) -> Floats:
+    """By how much the air raises a station's SEFD above that at the zenith; broadcast, 1 without opacity.
+
+    exp(tau (X - 1)) for the light lost, with the airmass X = 1/sin(elevation), times the rise of the system
+    temperature from ``system_k`` at the zenith by the emission of more air: 1 + T_air (e^-tau - e^(-tau X)) / T_sys
+    (radiative transfer of one warm layer; T_air from memory). inf at the horizon and below.
+    """
+    sine = np.sin(np.radians(np.asarray(elevation_deg, dtype=float)))
+    tau, system = _not_negative("zenith_opacity", zenith_opacity), _positive("system_k", system_k)
+    with np.errstate(divide="ignore", over="ignore", invalid="ignore"):
+        airmass = 1.0 / np.where(sine > 0, sine, np.nan)
+        lost = np.exp(tau * (airmass - 1.0))
+        warmer = 1.0 + AIR_K * (np.exp(-tau) - np.exp(-tau * airmass)) / system
+    return np.where(sine > 0, lost * warmer, np.inf)[()]
+
+
 # ------------------------------------------------------------------ beam
 
 
@@ -158,6 +175,23 @@ def cut_fwhm(major: ArrayLike, minor: ArrayLike, beam_pa_deg: ArrayLike, pa_deg:
     cosine, sine = _between(beam_pa_deg, pa_deg)
     a, b = _positive("major", major), _positive("minor", minor)
     return np.asarray(1.0 / np.hypot(cosine / a, sine / b))[()]
+
+
+def separation_in_beams(
+    east: ArrayLike, north: ArrayLike, major: ArrayLike, minor: ArrayLike, beam_pa_deg: ArrayLike
+) -> Floats:
+    """Length of an offset over ``cut_fwhm`` in its own direction, without forming the angle; 0 for no offset.
+
+    All lengths in one unit; broadcasts.
+    """
+    pa = np.radians(np.asarray(beam_pa_deg, float))
+    sine, cosine = np.sin(pa), np.cos(pa)
+    e, n = np.asarray(east, float), np.asarray(north, float)
+    a, b = _positive("major", major), _positive("minor", minor)
+    along, across = np.asarray(e * (sine / a)), np.asarray(e * (cosine / b))
+    along = along + n * (cosine / a)
+    across = across - n * (sine / b)
+    return np.sqrt(along * along + across * across)[()]
 
 
 def projected_fwhm(major: ArrayLike, minor: ArrayLike, beam_pa_deg: ArrayLike, pa_deg: ArrayLike) -> Floats:

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from planner.prediction.arclets import ArcletModel
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.rings import RingModel
 from planner.records import Band, Floats, Forecast, Measurable, TargetForecast
@@ -14,20 +15,30 @@ from planner.units import date_of_mjd
 TIED = 0.9  # correlation above which two numbers are called tied
 EPOCHS = 8  # evenly spaced epochs of the trial season
 RING_SHARE, KNOT_MAS = 0.003, 0.02  # errors of the trial epochs: share of the radius; mas
+ARCLET_SHARE = 0.05  # and share of an arclet's width
+MAIN_OBSERVABLES = ("radius", "motion since reference", "separation", "approaching separation")
 
 
 def answers_of(one: TargetForecast, whole: Forecast) -> list[tuple[str, str]]:
     """One sentence per feature: how it moves over the season, and when each setup can measure it."""
     found = []
     for band in one.bands:
-        if band.observable not in ("radius", "separation", "approaching separation"):
+        if band.observable not in MAIN_OBSERVABLES:
             continue
         text = _moves(band, whole)
         for m in one.measurable:
             if m.feature == band.feature:
                 text += f"; {m.setup}: {_when(m, whole)}"
+        text += _apart(one, band.feature)
         found.append((band.feature, text))
     return found
+
+
+def _apart(one: TargetForecast, feature: str) -> str:
+    """When two looks at an echo come apart in a difference image; "" for what is not subtracted."""
+    times = [b.quantiles[2] for b in one.bands if b.feature == feature and b.observable == "separation time"]
+    some = times[0][np.isfinite(times[0])] if times else np.zeros(0)
+    return f"; two epochs come apart in a difference image after {float(np.median(some)):.3g} d" if len(some) else ""
 
 
 def _moves(band: Band, whole: Forecast) -> str:
@@ -86,7 +97,7 @@ def ties_of(model: TargetModel, nights_mjd: Floats, setups: Sequence[str]) -> li
             [
                 np.abs(value[:, columns]) * RING_SHARE
                 if isinstance(f, RingModel)
-                else np.full_like(value[:, columns], KNOT_MAS)
+                else np.full_like(value[:, columns], _trial_error(f))
                 for f, columns in _columns(model)
             ],
             axis=-1,
@@ -106,8 +117,24 @@ def ties_of(model: TargetModel, nights_mjd: Floats, setups: Sequence[str]) -> li
                 text = f"{_plain(names[i])} and {_plain(names[j])} stay tied ({kind}, correlation {correlation:+.2f})"
                 if "distance_pc" in names[i] + names[j] and "depth_pc" in names[i] + names[j]:
                     text += ": radii fix depth_over_distance2, not each alone"
-                found.append(text)
+                found.append(text + _why_tied(names[i], names[j]))
     return found
+
+
+def _trial_error(feature: FeatureModel) -> float:
+    return ARCLET_SHARE * feature.record.width_arcsec if isinstance(feature, ArcletModel) else KNOT_MAS
+
+
+def _why_tied(one: str, other: str) -> str:
+    """What stands behind a tie that experts know."""
+    ends = {name.rpartition("/")[2].removeprefix("ln ") for name in (one, other)}
+    if ends == {"age_yr", "slope"}:
+        return ": an age from place and motion alone is wrong by what the dust is inclined"
+    if ends == {"distance_pc", "shell_radius_pc"}:
+        return ": a young ring fixes radius/distance2; the day it stands still fixes the radius"
+    if ends == {"distance_pc", "dust_distance_pc"}:
+        return ": radii fix 1/dust distance - 1/source distance, not each alone"
+    return ""
 
 
 def _plain(name: str) -> str:

@@ -1,97 +1,62 @@
 """Knots and two-sided pairs inside the observation model: offsets from the core (east, north) in mas.
 
 Shapes: theta (..., P), mjd (T,), observables (..., T, M) with M = 2 for a knot (east, north) and 4 for a pair
-(approaching east, north, receding east, north). The position of the core wanders: one offset (east, north) per
-30 days, in units of the beam, common to every knot of an epoch.
+(approaching east, north, receding east, north).
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from planner.campaign.records import Knot, KnotFlux, Pair, Target
-from planner.physics import flux
-from planner.prediction.coordinates import Block, Layout, Number, standard
+from planner.campaign.records import Knot, Pair, Target
+from planner.prediction.coordinates import Number
+from planner.prediction.core import Core, Wander, east_north
+from planner.prediction.light import Light
+from planner.prediction.once import once
+from planner.prediction.paths import IntrinsicPath, NozzlePath, Path, StationaryPath, indices
 from planner.records import Bools, Floats, Ints
 from planner.units import YEAR_DAYS, mjd_of_date
 
-WANDER_DAYS = 30.0  # the core keeps one offset for this long
-
-
-@dataclass(frozen=True)
-class Wander:
-    """Core offsets of a target: coordinates of each 30-day bin from the season's start."""
-
-    first_mjd: float
-    east: Ints  # (bins,) coordinate indices
-    north: Ints
-
-    def bin_of(self, mjd: Floats) -> Ints:
-        """Bin of each moment, (T,); moments outside the season fall into the nearest bin."""
-        bins = np.floor((mjd - self.first_mjd) / WANDER_DAYS).astype(np.int64)
-        return np.clip(bins, 0, len(self.east) - 1)
-
-    def offset(self, theta: Floats, mjd: Floats) -> Floats:
-        """Offset of the core in beams, (..., T, 2)."""
-        where = self.bin_of(mjd)
-        return np.stack([theta[..., self.east[where]], theta[..., self.north[where]]], axis=-1)
-
-
-def build_wander(layout: Layout, sigma_beam: float, first_mjd: float, last_mjd: float) -> Wander:
-    """Add the core's offsets to a layout."""
-    bins = int((last_mjd - first_mjd) // WANDER_DAYS) + 1
-    why = "core position wanders; 0.05-0.1 of the beam"
-    index = [
-        [layout.add(standard(f"core wander {axis} {i + 1}", "beam", sigma_beam, why=why))[0] for i in range(bins)]
-        for axis in ("east", "north")
-    ]
-    return Wander(first_mjd, np.array(index[0]), np.array(index[1]))
+__all__ = ["JetModel", "KnotModel", "PairModel", "SpotState", "Wander"]
 
 
 @dataclass(frozen=True)
 class SpotState:
-    """One knot of a feature: (..., T)."""
+    """One knot of a feature: (..., T). Offset and light are continued to before the ejection."""
 
     exists: Bools
-    separation_mas: Floats
-    pa_deg: Floats
-    flux_mjy: Floats
+    offset_mas: Floats  # (..., T, 2)
+    light_mjy: Floats
 
+    @property
+    def separation_mas(self) -> Floats:
+        """Distance from the core; nan where the knot does not exist."""
+        return np.where(self.exists, np.hypot(self.offset_mas[..., 0], self.offset_mas[..., 1]), np.nan)
 
-def _flux_mjy(record: KnotFlux, offset: Floats, mjd: Floats, ghz: float | None) -> Floats:
-    days = mjd - mjd_of_date(record.on) - 0.5
-    value = flux.exponential_mjy(record.mjy, days, record.fades.exponential_days) * np.exp(offset)
-    return value if ghz is None else flux.at_frequency_mjy(value, record.ghz, ghz, record.spectral_index)
+    @property
+    def pa_deg(self) -> Floats:
+        """Position angle from the core; nan where the knot does not exist."""
+        angle = np.degrees(np.arctan2(self.offset_mas[..., 0], self.offset_mas[..., 1]))
+        return np.where(self.exists, angle, np.nan)
 
-
-def _state(offset_mas: Floats, exists: Bools, flux_mjy: Floats) -> SpotState:
-    east, north = offset_mas[..., 0], offset_mas[..., 1]
-    separation = np.where(exists, np.hypot(east, north), np.nan)
-    pa = np.where(exists, np.degrees(np.arctan2(east, north)), np.nan)
-    return SpotState(exists, separation, pa, np.where(exists, flux_mjy, np.nan))
+    @property
+    def flux_mjy(self) -> Floats:
+        """Flux; nan where the knot does not exist."""
+        return np.where(self.exists, self.light_mjy, np.nan)
 
 
 @dataclass(frozen=True)
 class KnotModel:
-    """One knot of an extragalactic (or any) jet.
-
-    r(t) = v (t - t0) + a ((t - t_ref)^2 - (t0 - t_ref)^2) / 2 from the core crossing t0, so that v is the velocity
-    at the reference date; a = |v| (f_along e_along + f_across e_across) with f per year.
-    """
+    """One knot: where it goes, how bright it is, and the core it is measured from."""
 
     record: Knot
     target: Target
-    t0: Number  # days after core_crossing.date
-    velocity: tuple[int, int]  # east, north, mas/yr at the reference date
-    along: Number
-    across: Number
-    ln_flux: Number
-    reference_mjd: float
-    wander: Wander
-    beams: Mapping[str, float]  # geometric mean beam of each array setup, mas
+    path: Path
+    light: Light
+    core: Core
+    stated_ghz: float  # frequency of the core from which the path is stated
 
     kind = "knot"
     spots = ("",)
@@ -106,43 +71,70 @@ class KnotModel:
         """Names of the measured quantities, in order."""
         return ("east", "north")
 
+    @property
+    def stationary(self) -> bool:
+        """True for a feature without a motion."""
+        return isinstance(self.path, StationaryPath)
+
     def depends(self, setup: str | None) -> tuple[int, ...]:
-        """Coordinates (core wander apart) that move this feature's observables."""
-        numbers = (self.t0, self.along, self.across)
-        return (*self.velocity, *(n.index for n in numbers if n.index is not None))
+        """Coordinates that move this feature's observables, those of ``felt`` apart."""
+        return (*self.path.depends, *self.core.depends(setup, self.stated_ghz))
 
-    def crossing_mjd(self, theta: Floats) -> Floats:
-        """Core crossing, (..., 1)."""
-        return mjd_of_date(self.record.motion.core_crossing.date) + 0.5 + self.t0.value(theta)
+    def felt(self, mjd: Floats, setup: str | None) -> list[Ints]:
+        """Coordinates that are new every 30 days: for each kind the one that each moment feels, (T,)."""
+        own = self.path.jitter.felt(mjd) if isinstance(self.path, StationaryPath) else []
+        return own + self.core.felt(mjd, setup)
 
+    def crossing_mjd(self, theta: Floats, ghz: float | None = None) -> Floats:
+        """Core crossing (or ejection), (..., 1); of the core as seen at another frequency if one is given.
+
+        nan for motions that have no such date.
+        """
+        start = self.path.start_mjd(theta)
+        if start is None:
+            return np.full((*theta.shape[:-1], 1), np.nan)
+        if ghz is None:
+            return start
+        farther = self.core.outward_mas(theta, self.stated_ghz, ghz)
+        return start + farther / self.speed_mas_yr(theta)[..., None] * YEAR_DAYS
+
+    def velocity_mas_yr(self, theta: Floats) -> Floats:
+        """Velocity at the reference date, (..., 2); zero for a stationary feature."""
+        if isinstance(self.path, StationaryPath):
+            return np.zeros((*theta.shape[:-1], 2))
+        return self.path.velocity_mas_yr(theta)
+
+    def speed_mas_yr(self, theta: Floats) -> Floats:
+        """Speed at the reference date, (...)."""
+        velocity = self.velocity_mas_yr(theta)
+        return np.hypot(velocity[..., 0], velocity[..., 1])
+
+    def doppler(self, theta: Floats) -> Floats:
+        """Doppler factor, (..., 1); nan for motions that do not know true speed and angle."""
+        from planner.physics import jet
+
+        if not isinstance(self.path, IntrinsicPath | NozzlePath):
+            return np.full((*theta.shape[:-1], 1), np.nan)
+        return np.asarray(jet.doppler_factor(self.path.beta(theta), self.path.angle_deg(theta)))
+
+    @once
     def offset_mas(self, theta: Floats, mjd: Floats) -> Floats:
-        """Offset from the core (east, north) on the sky, (..., T, 2), continued below the core for derivatives."""
-        t0 = self.crossing_mjd(theta)
-        east, north = theta[..., self.velocity[0], None], theta[..., self.velocity[1], None]
-        years = (mjd - t0) / YEAR_DAYS
-        bend = 0.5 * (((mjd - self.reference_mjd) / YEAR_DAYS) ** 2 - ((t0 - self.reference_mjd) / YEAR_DAYS) ** 2)
-        along, across = self.along.value(theta), self.across.value(theta)
-        # along = (east, north); across = turned by 90 degrees from north through east
-        return np.stack(
-            [
-                east * years + bend * (along * east + across * north),
-                north * years + bend * (along * north - across * east),
-            ],
-            axis=-1,
-        )
+        """Offset from the core on the sky, (..., T, 2), continued to before the ejection for derivatives."""
+        return self.path.offset_mas(theta, mjd)
 
     def observe(self, theta: Floats, mjd: Floats, setup: str | None = None) -> Floats:
-        """Offset from the observed core in mas, (..., T, 2); with a setup the core's wander is applied."""
-        value = self.offset_mas(theta, mjd)
-        if setup is None or setup not in self.beams:
-            return value
-        return value + self.wander.offset(theta, mjd) * self.beams[setup]
+        """Offset from the observed core in mas, (..., T, 2); with a setup its own core, and its wander, are meant."""
+        return self.offset_mas(theta, mjd) + self.core.displace(theta, mjd, setup, self.stated_ghz)
 
-    def spot_states(self, theta: Floats, mjd: Floats, ghz: float | None = None) -> tuple[SpotState, ...]:
-        """State of the knot at a frequency (the flux's own if None)."""
-        exists = mjd > self.crossing_mjd(theta)
-        light = _flux_mjy(self.record.flux, self.ln_flux.value(theta), mjd, ghz)
-        return (_state(self.offset_mas(theta, mjd), exists, light),)
+    def spot_states(
+        self, theta: Floats, mjd: Floats, ghz: float | None = None, setup: str | None = None
+    ) -> tuple[SpotState, ...]:
+        """State of the knot at a frequency (the flux's own if None), on a setup's flux scale if one is given."""
+        start = self.path.start_mjd(theta)
+        shape = (*theta.shape[:-1], len(mjd))
+        exists = np.ones(shape, bool) if start is None else mjd > start
+        flux = self.light.mjy(theta, mjd, ghz) * np.exp(self.core.ln_scale(theta, setup))
+        return (SpotState(exists, self.offset_mas(theta, mjd), flux),)
 
 
 @dataclass(frozen=True)
@@ -157,12 +149,13 @@ class PairModel:
     pa: Number
     along: Number
     across: Number
-    ln_flux: Number
-    wander: Wander
-    beams: Mapping[str, float]
+    light: Light
+    core: Core
+    stated_ghz: float
 
     kind = "pair"
     spots = ("approaching", "receding")
+    stationary = False
 
     @property
     def name(self) -> str:
@@ -175,103 +168,61 @@ class PairModel:
         return ("approaching east", "approaching north", "receding east", "receding north")
 
     def depends(self, setup: str | None) -> tuple[int, ...]:
-        """Coordinates (core wander apart) that move this feature's observables."""
-        numbers = (self.t0, self.approaching, self.receding, self.pa, self.along, self.across)
-        return tuple(n.index for n in numbers if n.index is not None)
+        """Coordinates that move this feature's observables, those of ``felt`` apart."""
+        own = indices((self.t0, self.approaching, self.receding, self.pa, self.along, self.across))
+        return (*own, *self.core.depends(setup, self.stated_ghz))
+
+    def felt(self, mjd: Floats, setup: str | None) -> list[Ints]:
+        """Coordinates that are new every 30 days: for each kind the one that each moment feels, (T,)."""
+        return self.core.felt(mjd, setup)
 
     def ejection_mjd(self, theta: Floats) -> Floats:
         """Moment of ejection, (..., 1)."""
         return mjd_of_date(self.record.motion.ejection.date) + 0.5 + self.t0.value(theta)
 
+    def beta_cos(self, theta: Floats) -> Floats:
+        """True speed times cosine of the angle, free of the distance, (..., 1)."""
+        near, far = self.approaching.value(theta), self.receding.value(theta)
+        return (near - far) / (near + far)
+
+    def speed_mas_yr(self, theta: Floats) -> Floats:
+        """Speed of the approaching knot, (...)."""
+        return self.approaching.value(theta)[..., 0] * YEAR_DAYS
+
+    @once
     def offset_mas(self, theta: Floats, mjd: Floats) -> Floats:
         """Offsets from the core, (..., T, 4)."""
         days = mjd - self.ejection_mjd(theta)
-        bend = 0.5 * days**2 / YEAR_DAYS
+        curve = 0.5 * days**2 / YEAR_DAYS
         pa = np.radians(self.pa.value(theta))
         east, north = np.sin(pa), np.cos(pa)
-        forward, side = days + bend * self.along.value(theta), bend * self.across.value(theta)
+        forward, side = days + curve * self.along.value(theta), curve * self.across.value(theta)
         unit_east, unit_north = forward * east + side * north, forward * north - side * east
         near, far = self.approaching.value(theta), -self.receding.value(theta)
-        return np.stack([near * unit_east, near * unit_north, far * unit_east, far * unit_north], axis=-1)
+        return east_north(near * unit_east, near * unit_north, far * unit_east, far * unit_north)
 
     def observe(self, theta: Floats, mjd: Floats, setup: str | None = None) -> Floats:
-        """Offsets from the observed core in mas, (..., T, 4); with a setup the core's wander is applied."""
+        """Offsets from the observed core in mas, (..., T, 4); with a setup its own core, and its wander, are meant."""
         value = self.offset_mas(theta, mjd)
-        if setup is None or setup not in self.beams:
-            return value
-        wander = self.wander.offset(theta, mjd) * self.beams[setup]
-        return value + np.concatenate([wander, wander], axis=-1)
+        moved = self.core.displace(theta, mjd, setup, self.stated_ghz)
+        return value if isinstance(moved, float) else value + np.concatenate([moved, moved], axis=-1)
 
-    def spot_states(self, theta: Floats, mjd: Floats, ghz: float | None = None) -> tuple[SpotState, ...]:
+    def spot_states(
+        self, theta: Floats, mjd: Floats, ghz: float | None = None, setup: str | None = None
+    ) -> tuple[SpotState, ...]:
         """States of the approaching and of the receding knot."""
         exists = mjd > self.ejection_mjd(theta)
         offsets = self.offset_mas(theta, mjd)
-        light = _flux_mjy(self.record.flux, self.ln_flux.value(theta), mjd, ghz)
+        scale = np.exp(self.core.ln_scale(theta, setup))
+        near = self.light.mjy(theta, mjd, ghz)
         ratio = self.record.flux.receding_ratio
-        return _state(offsets[..., :2], exists, light), _state(offsets[..., 2:], exists, light * ratio)
+        far = near * ratio if ratio is not None else self.light.opposite_mjy(theta, mjd, self.beta_cos(theta), ghz)
+        return SpotState(exists, offsets[..., :2], near * scale), SpotState(exists, offsets[..., 2:], far * scale)
 
 
 JetModel = KnotModel | PairModel
 
 
-def build_knot(
-    record: Knot, target: Target, layout: Layout, *, wander: Wander, beams: Mapping[str, float], middle_mjd: float
-) -> KnotModel:
-    """Add a knot's coordinates to a layout and return its model."""
-    motion, name = record.motion, record.name
-    velocity = layout.add(
-        Block(
-            (f"{name}/speed_east", f"{name}/speed_north"), ("mas/yr", "mas/yr"),
-            (motion.speed_mas_yr, motion.pa_deg), _components, nuisance=False, why="the target's file",
-        )
-    )  # fmt: skip
-    along, across = _acceleration(layout, name, motion.acceleration_fraction_yr)
-    return KnotModel(
-        record=record, target=target, t0=_clock(layout, f"{name}/core_crossing", motion.core_crossing.sigma_days),
-        velocity=(velocity[0], velocity[1]), along=along, across=across,
-        ln_flux=_scatter(layout, name, record.flux.sigma_fraction), reference_mjd=middle_mjd,
-        wander=wander, beams=beams,
-    )  # fmt: skip
-
-
-def build_pair(
-    record: Pair, target: Target, layout: Layout, *, wander: Wander, beams: Mapping[str, float]
-) -> PairModel:
-    """Add a pair's coordinates to a layout and return its model."""
-    motion, name = record.motion, record.name
-    along, across = _acceleration(layout, name, motion.acceleration_fraction_yr)
-    return PairModel(
-        record=record, target=target, t0=_clock(layout, f"{name}/ejection", motion.ejection.sigma_days),
-        approaching=layout.add_law(f"{name}/approaching_mas_d", "mas/d", motion.approaching_mas_d),
-        receding=layout.add_law(f"{name}/receding_mas_d", "mas/d", motion.receding_mas_d),
-        pa=layout.add_law(f"{name}/pa_deg", "deg", motion.pa_deg),
-        along=along, across=across, ln_flux=_scatter(layout, name, record.flux.sigma_fraction),
-        wander=wander, beams=beams,
-    )  # fmt: skip
-
-
-def _components(values: Floats) -> Floats:
-    speed, pa = values[..., 0], np.radians(values[..., 1])
-    return np.stack([speed * np.sin(pa), speed * np.cos(pa)], axis=-1)
-
-
-def _clock(layout: Layout, name: str, sigma_days: float) -> Number:
-    if sigma_days <= 0:
-        return Number(None, False, 0.0)
-    return Number(layout.add(standard(name, "d", sigma_days, why="the target's file", nuisance=False))[0], False, 0.0)
-
-
-def _acceleration(layout: Layout, name: str, sigma: float) -> tuple[Number, Number]:
-    if sigma <= 0:
-        return Number(None, False, 0.0), Number(None, False, 0.0)
-    why = "most well-sampled features accelerate or turn"
-    along, across = (
-        Number(layout.add(standard(f"{name}/acceleration {axis}", "1/yr", sigma, why=why))[0], False, 0.0)
-        for axis in ("along", "across")
-    )
-    return along, across
-
-
-def _scatter(layout: Layout, name: str, sigma_fraction: float) -> Number:
-    why = "flux scale and fading"
-    return Number(layout.add(standard(f"{name}/ln flux", "", sigma_fraction, why=why))[0], False, 0.0)
+def opposite(path: IntrinsicPath | NozzlePath) -> IntrinsicPath | NozzlePath:
+    """The trajectory of the knot thrown out the other way by the same ejection."""
+    return replace(path, side=-path.side)

@@ -14,11 +14,14 @@ import numpy as np
 
 from planner.campaign.records import CameraSetup, Receiver, SetupRef
 from planner.instruments import interferometer
-from planner.prediction.look_knots import spot_errors
-from planner.prediction.look_rings import CameraSky, ring_errors
+from planner.prediction.arclets import ArcletModel
+from planner.prediction.knots import KnotModel, PairModel
+from planner.prediction.look_knots import View, scattered_mas, see_spot, spot_errors
+from planner.prediction.look_rings import CameraSky, arclet_errors, ring_errors
 from planner.prediction.model import TargetModel
 from planner.prediction.rings import RingModel
 from planner.records import Bools, Floats, Track
+from planner.units import date_of_mjd
 
 
 @dataclass(frozen=True)
@@ -35,7 +38,7 @@ class LookErrors:
     """Error model of looks at a target with one setup."""
 
     rotation: Floats  # (M, M)
-    sigma: Floats  # (B, T, M) along the rotated axes, inf where nothing is measured
+    sigma: Floats  # (B, T, M) along the rotated axes, inf where nothing is measured; (B, T, 0) if not asked for
     measurable: Bools  # (B, T, F)
     snr: Floats  # (B, T, F), 0 where it does not exist
     blocked: tuple[Block, ...]
@@ -47,58 +50,88 @@ class LookErrors:
 
 
 def camera_errors(
-    model: TargetModel, theta: Floats, mjd: Floats, setup: CameraSetup, sky: CameraSky, seconds: Floats
-) -> LookErrors:
-    """Error model of camera looks at every ring in the field; jets are not measured by cameras."""
-    sigma, measurable, snr, blocked = [], [], [], []
+    model: TargetModel, theta: Floats, mjd: Floats, setup: CameraSetup, sky: CameraSky, seconds: Floats,
+    name: str = "", *, with_sigma: bool = True,
+) -> LookErrors:  # fmt: skip
+    """Error model of camera looks at every echo in the field; jets are not measured by cameras.
+
+    ``name``: of the setup, to find its templates.
+    """
+    sigma, measurable, snr, blocked, axes = [], [], [], [], []
     for feature in model.features:
         shape = (len(theta), len(mjd))
-        if not isinstance(feature, RingModel):
-            sigma.append(np.full((*shape, len(feature.observables)), np.inf))
+        axes.append(feature.axes() if isinstance(feature, ArcletModel) else np.eye(len(feature.observables)))
+        if not isinstance(feature, RingModel | ArcletModel):
+            sigma.append(np.full((*shape, len(feature.observables) if with_sigma else 0), np.inf))
             measurable.append(np.zeros(shape, bool))
             snr.append(np.zeros(shape))
             blocked.append(Block(feature.name, "a camera does not resolve it", np.ones(shape, bool)))
             continue
-        one = ring_errors(model, feature, theta, mjd, setup, sky, seconds)
-        sigma.append(one[0])
+        if isinstance(feature, RingModel):
+            one = ring_errors(model, feature, theta, mjd, setup, sky, seconds, name, with_sigma=with_sigma)
+        else:
+            one = arclet_errors(model, feature, theta, mjd, setup, sky, seconds, name)
+        sigma.append(one[0] if with_sigma else np.zeros((*shape, 0)))
         measurable.append(one[1])
         snr.append(one[2])
         blocked += [Block(feature.name, reason, mask) for reason, mask in one[3].items()]
-    total = sum(len(f.observables) for f in model.features)
+    from scipy.linalg import block_diag
+
     return LookErrors(
-        np.eye(total), np.concatenate(sigma, axis=-1), np.stack(measurable, -1), np.stack(snr, -1), tuple(blocked)
-    )
+        np.asarray(block_diag(*axes)), np.concatenate(sigma, axis=-1), np.stack(measurable, -1), np.stack(snr, -1),
+        tuple(blocked),
+    )  # fmt: skip
 
 
-def array_errors(model: TargetModel, theta: Floats, mjd: Floats, receiver: Receiver, track: Track) -> LookErrors:
+def noise_jy(track: Track, mjd: Floats) -> Floats | float:
+    """Image noise of a look at each moment: (T,) where the months differ."""
+    if not track.noise_by_month_jy:
+        return track.noise_jy
+    return np.array([track.noise_by_month_jy[date_of_mjd(moment).month - 1] for moment in mjd], dtype=float)
+
+
+def array_errors(
+    model: TargetModel, theta: Floats, mjd: Floats, receiver: Receiver, track: Track, setup: str | None = None,
+    *, with_sigma: bool = True,
+) -> LookErrors:  # fmt: skip
     """Error model of array looks at every knot in the field; rings are not measured by arrays.
 
     Position errors along the beam's axes (beam / 2 S/N, size, floor), variance raised where the knot blends with
-    the core, nothing inside half a beam along the direction of the knot.
+    the core or with another knot, nothing inside half a beam of either.
     """
     sigma, measurable, snr, blocked, axes = [], [], [], [], []
-    noise_mjy = 1e3 * float(
-        interferometer.effective_noise_jy(track.noise_jy, receiver.core_mjy / 1e3, receiver.dynamic_range)
+    noise_mjy = 1e3 * interferometer.effective_noise_jy(
+        noise_jy(track, mjd), receiver.core_mjy / 1e3, receiver.dynamic_range
     )
+    view = View(receiver, track, noise_mjy, scattered_mas(model.target.scatter_mas, receiver.ghz))
     pa = np.radians(track.beam_pa_deg)
     beam_axes = np.array([[np.sin(pa), np.cos(pa)], [np.cos(pa), -np.sin(pa)]])  # major, minor, on (east, north)
+    spots = {
+        feature.name: [
+            see_spot(feature.name, label, state, feature.record.size_mas, feature.record.grows, view)
+            for label, state in zip(feature.spots, feature.spot_states(theta, mjd, receiver.ghz, setup), strict=True)
+        ]
+        for feature in model.features
+        if isinstance(feature, KnotModel | PairModel)
+    }
+    every = [spot for some in spots.values() for spot in some]
     for feature in model.features:
         shape = (len(theta), len(mjd))
-        if isinstance(feature, RingModel):
-            sigma.append(np.full((*shape, len(feature.observables)), np.inf))
+        if not isinstance(feature, KnotModel | PairModel):
+            sigma.append(np.full((*shape, len(feature.observables) if with_sigma else 0), np.inf))
             measurable.append(np.zeros(shape, bool))
             snr.append(np.zeros(shape))
             blocked.append(Block(feature.name, "an array does not see it", np.ones(shape, bool)))
             axes.append(np.eye(len(feature.observables)))
             continue
-        spots = feature.spot_states(theta, mjd, receiver.ghz)
-        size = feature.record.size_mas
-        each = [spot_errors(spot, size, receiver, track, noise_mjy) for spot in spots]
+        own = spots[feature.name]
+        seen = own if with_sigma else own[:1]  # a pair is measurable when its approaching knot is
+        each = [spot_errors(spot, [o for o in every if o is not spot], view, with_sigma=with_sigma) for spot in seen]
         sigma.append(np.concatenate([e[0] for e in each], axis=-1))
         measurable.append(each[0][1])
         snr.append(each[0][2])
         blocked += [Block(feature.name, reason, mask) for reason, mask in each[0][3].items()]
-        axes += [beam_axes] * len(spots)
+        axes += [beam_axes] * len(own)
     from scipy.linalg import block_diag
 
     return LookErrors(
@@ -116,12 +149,16 @@ def look_errors(
     sky: CameraSky | None = None,
     seconds: Floats | None = None,
     track: Track | None = None,
+    with_sigma: bool = True,
 ) -> LookErrors:
-    """Error covariance and measurability of looks with a setup: the only error model there is."""
+    """Error covariance and measurability of looks with a setup: the only error model there is.
+
+    Without ``with_sigma`` only measurability is found: ``sigma`` is (B, T, 0).
+    """
     if setup.receiver is not None:
         assert track is not None
-        return array_errors(model, theta, mjd, setup.receiver, track)
+        return array_errors(model, theta, mjd, setup.receiver, track, setup.name, with_sigma=with_sigma)
     assert setup.camera is not None
     assert sky is not None
     assert seconds is not None
-    return camera_errors(model, theta, mjd, setup.camera, sky, seconds)
+    return camera_errors(model, theta, mjd, setup.camera, sky, seconds, setup.name, with_sigma=with_sigma)

@@ -11,15 +11,18 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from planner.campaign.records import Campaign, Knot, Pair, Ring, Target
+from planner.campaign.array_setups import companions
+from planner.campaign.records import Arclet, Campaign, Knot, Pair, Ring, SetupRef, Target
 from planner.errors import InputError
+from planner.prediction.arclets import ArcletModel, build_arclet
+from planner.prediction.build_jets import build_jets
 from planner.prediction.coordinates import Block, Layout, Number, named_seed, prior_belief, prior_covariance, standard
-from planner.prediction.knots import KnotModel, PairModel, Wander, build_knot, build_pair, build_wander
+from planner.prediction.knots import KnotModel, PairModel, Wander
 from planner.prediction.rings import RingModel, SetupNuisance, build_ring
-from planner.records import Belief, Floats
+from planner.records import Belief, Floats, Ints
 from planner.units import mjd_of_date
 
-FeatureModel = RingModel | KnotModel | PairModel
+FeatureModel = RingModel | ArcletModel | KnotModel | PairModel
 
 # Central differences with this share of the prior width: truncation about 1e-8 of the derivative for curves that
 # bend over a prior width, rounding about 1e-12 / 1e-4; tests/prediction compares with Richardson extrapolation.
@@ -69,19 +72,24 @@ class TargetModel:
                 high = feature.observe(theta + shift, mjd, setup)
                 low = feature.observe(theta - shift, mjd, setup)
                 out[..., j] = (high - low) / (2 * step)
-            if isinstance(feature, KnotModel | PairModel) and setup is not None and setup in feature.beams:
-                self._wander_derivatives(out, feature, mjd, feature.beams[setup])
+            if isinstance(feature, KnotModel | PairModel):
+                for felt in feature.felt(mjd, setup):
+                    self._felt_derivatives(out, feature, theta, mjd, setup, felt)
             parts.append(out)
         return np.concatenate(parts, axis=-2)
 
-    def _wander_derivatives(self, out: Floats, feature: KnotModel | PairModel, mjd: Floats, beam_mas: float) -> None:
-        """Exact derivatives by the core's offsets: each moment feels one bin, so differences would be wasted."""
-        assert self.wander is not None
-        where = self.wander.bin_of(mjd)
-        times = np.arange(len(mjd))
-        for m, name in enumerate(feature.observables):
-            index = self.wander.east if name.endswith("east") else self.wander.north
-            out[..., times, m, index[where]] += beam_mas
+    def _felt_derivatives(
+        self, out: Floats, feature: FeatureModel, theta: Floats, mjd: Floats, setup: str | None, felt: Ints
+    ) -> None:
+        """Derivatives by coordinates of which each moment feels one, ``felt`` (T,): all are moved at once."""
+        if not len(mjd):
+            return
+        step = STEP * self.sigma[felt[0]]
+        shift = np.zeros(self.size)
+        shift[np.unique(felt)] = step
+        high, low = feature.observe(theta + shift, mjd, setup), feature.observe(theta - shift, mjd, setup)
+        slope = np.moveaxis((high - low) / (2 * step), -2, 0)  # (T, ..., M): numpy puts indexed axes first
+        out[..., np.arange(len(mjd)), :, felt] = slope
 
     def belief(self, count: int, seed: int, purpose: str) -> Belief:
         """Prior belief with ``count`` draws from the stream named ``purpose``."""
@@ -104,46 +112,64 @@ def build_model(campaign: Campaign, target: Target, beams_mas: Mapping[str, floa
     setups = [s for s in campaign.setups if any(
         a.setup == s.name and a.programme == campaign.programme_of(target).name for a in campaign.file.allocations
     )]  # fmt: skip
-    rings = [f for f in target.features if isinstance(f, Ring)]
-    features: list[FeatureModel] = []
-    if rings:
-        cameras = [s.name for s in setups if not s.is_array]
-        features += _rings(target, rings, layout, distance, cameras, middle)
-    jets = [f for f in target.features if isinstance(f, Knot | Pair)]
+    features = _echoes(target, layout, distance, [s for s in setups if not s.is_array], middle)
     wander = None
-    if jets:
-        wander = build_wander(layout, target.nuisances.core_wander_beam, first, last)
-        for record in jets:
-            if isinstance(record, Knot):
-                features.append(build_knot(record, target, layout, wander=wander, beams=beams_mas, middle_mjd=middle))
-            else:
-                features.append(build_pair(record, target, layout, wander=wander, beams=beams_mas))
+    if any(isinstance(f, Knot | Pair) for f in target.features):
+        bands = [band for s in campaign.setups for band in (s, *companions(s))]
+        ghz = {s.name: s.receiver.ghz for s in bands if s.receiver is not None}
+        jets, wander = build_jets(target, layout, distance, beams_mas, ghz, first, last)
+        features += jets
     sigma = np.sqrt(np.concatenate([np.diag(b.moments()[1]) for b in layout.blocks]))
     order = {record.name: i for i, record in enumerate(target.features)}
     features.sort(key=lambda f: order[f.name])
     return TargetModel(target, tuple(layout.blocks), tuple(features), wander, distance, sigma, middle)
 
 
-def _rings(
-    target: Target, rings: list[Ring], layout: Layout, distance: Number | None, cameras: list[str], middle: float
+def _echoes(
+    target: Target, layout: Layout, distance: Number | None, cameras: list[SetupRef], middle: float
 ) -> list[FeatureModel]:
-    if target.outburst is None or distance is None:
-        raise InputError("a ring needs outburst and distance_pc", place=target.source.place(), field="features")
-    sigma_days = target.outburst.peak.sigma_days
+    """Rings and arclets, with what they share: the outburst's clock, and scale and centring of each camera."""
+    records = [f for f in target.features if isinstance(f, Ring | Arclet)]
+    rings = [f for f in records if isinstance(f, Ring)]
+    if not records:
+        return []
     clock = Number(None, False, 0.0)
-    if sigma_days > 0:
-        clock = Number(
-            layout.add(standard("outburst clock", "d", sigma_days, why="width of the date of the peak"))[0], False, 0.0
-        )
-    nuisance = target.nuisances
-    setups = {}
-    for name in cameras:
-        scale = layout.add(standard(f"{name}/plate scale", "", nuisance.plate_scale_sigma, why="setup's plate scale"))
+    if rings:
+        if target.outburst is None:
+            raise InputError("a ring needs an outburst", place=target.source.place(), field="features")
+        sigma_days = target.outburst.peak.sigma_days
+        if sigma_days > 0:
+            block = standard("outburst clock", "d", sigma_days, why="width of the date of the peak")
+            clock = Number(layout.add(block)[0], False, 0.0)
+    setups = _setup_nuisances(target, layout, cameras, scales=bool(rings))
+    filters = {s.name: s.camera.filter for s in cameras if s.camera is not None}
+    found: list[FeatureModel] = []
+    for record in records:
+        if isinstance(record, Ring):
+            found.append(build_ring(record, target, layout, distance=distance, clock=clock, setups=setups,
+                                    middle_mjd=middle, filters=filters))  # fmt: skip
+        else:
+            assert distance is not None
+            centres = {name: (s.centre_east, s.centre_north) for name, s in setups.items()}
+            found.append(build_arclet(record, target, layout, distance=distance, centres=centres))
+    return found
+
+
+def _setup_nuisances(
+    target: Target, layout: Layout, cameras: list[SetupRef], *, scales: bool
+) -> dict[str, SetupNuisance]:
+    """Scale error and centre offset of each camera; arclets alone have no use for the scale (-1)."""
+    nuisance, setups = target.nuisances, {}
+    for setup in cameras:
+        scale = -1
+        if scales:
+            block = standard(f"{setup.name}/plate scale", "", nuisance.plate_scale_sigma, why="setup's plate scale")
+            (scale,) = layout.add(block)
         axes = [
-            layout.add(standard(f"{name}/centre {axis}", "arcsec", nuisance.centre_sigma_arcsec, why="centring"))[0]
+            layout.add(standard(f"{setup.name}/centre {axis}", "arcsec", nuisance.centre_sigma_arcsec, why="centring"))[
+                0
+            ]
             for axis in ("east", "north")
         ]
-        setups[name] = SetupNuisance(scale[0], axes[0], axes[1])
-    return [
-        build_ring(r, target, layout, distance=distance, clock=clock, setups=setups, middle_mjd=middle) for r in rings
-    ]
+        setups[setup.name] = SetupNuisance(scale, axes[0], axes[1])
+    return setups

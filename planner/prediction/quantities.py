@@ -12,6 +12,7 @@ import numpy as np
 
 from planner.campaign.records import LearnGoal
 from planner.prediction.jet_quantities import JET_QUANTITIES
+from planner.prediction.knots import KnotModel
 from planner.prediction.model import STEP, FeatureModel, Quantity, TargetModel
 from planner.prediction.ring_quantities import RING_QUANTITIES
 from planner.records import Floats
@@ -31,6 +32,8 @@ class Wanted:
     def value(self, model: TargetModel, theta: Floats) -> Floats:
         """Value (N,) of the quantity, or of its logarithm for a percent goal."""
         value = QUANTITIES[(self.feature.kind, self.goal.learn)](model, self.feature, theta)
+        if self.goal.at_ghz is not None and isinstance(self.feature, KnotModel):
+            value = self.feature.crossing_mjd(theta, self.goal.at_ghz)[..., 0]
         if not self.of_logarithm:
             return value
         with np.errstate(invalid="ignore", divide="ignore"):

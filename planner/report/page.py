@@ -103,7 +103,7 @@ def page_html(
         "accounts": tables.accounts_table(plan),
         "looks": tables.looks_table(plan),
         "reasons": tables.reasons_table(plan),
-        "forecast_tables": (tables.forecast_values(forecast), tables.forecast_measurable(forecast)),
+        "forecast_tables": _forecast_tables(forecast),
         "windows_tables": (tables.windows_season(windows), *tables.windows_months(windows)),
         "warnings": _warnings(forecast, understood),
         "assumed": tables.assumptions_table(understood.assumptions) if understood else None,
@@ -116,6 +116,12 @@ def page_html(
         autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True, finalize=_unbroken
     )
     return environment.from_string(template).render(facts)
+
+
+def _forecast_tables(forecast: Forecast) -> tuple[tables.TextTable, ...]:
+    derived = tables.forecast_derived(forecast)
+    shown = (tables.forecast_values(forecast), tables.forecast_measurable(forecast))
+    return (*shown, derived) if derived.rows else shown
 
 
 def _unbroken(value: Any) -> Any:

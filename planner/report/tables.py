@@ -7,7 +7,9 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from typing import Protocol
 
-from planner.records import Account, Band, Forecast, GoalResult, Look, Measurable, Plan, State, Windows
+import numpy as np
+
+from planner.records import Account, Band, Derived, Forecast, GoalResult, Look, Measurable, Plan, State, Windows
 from planner.report.series import was_considered
 from planner.report.words import (
     NOTHING,
@@ -218,6 +220,30 @@ def forecast_values(forecast: Forecast) -> TextTable:
     return TextTable("Forecast: median (16 to 84 %)", columns, rows, numbers, note, whole)
 
 
+def forecast_derived(forecast: Forecast) -> TextTable:
+    """What is believed of every quantity that follows from the parameters."""
+
+    def words(d: Derived, i: int) -> str:
+        value = float(d.quantiles[i])
+        return iso_of_mjd(value)[:10] if d.unit == "MJD" else number(value)
+
+    rows = tuple(
+        (
+            feature_name(t.target, d.feature),
+            plain(d.quantity),
+            words(d, 2),
+            f"{words(d, 1)} to {words(d, 3)}",
+            NOTHING if d.unit in ("", "MJD") else plain(d.unit),
+            percent(d.exists),
+        )
+        for t in forecast.targets
+        for d in t.derived
+    )
+    columns = ("feature", "quantity", "median", "16 to 84 %", "unit", "exists")
+    note = "What is believed now; exists: share of draws in which the quantity has a value." if rows else ""
+    return TextTable("What follows from the parameters", columns, rows, frozenset({2, 5}), note, frozenset({1, 3}))
+
+
 def _from_words(forecast: Forecast, m: Measurable, ends: tuple[float, float, float], edge: str) -> str:
     low, middle, high = (night_of(forecast, float(v)) for v in ends)
     if middle == NOTHING:
@@ -271,21 +297,31 @@ def _pairs(windows: Windows, target: str | None) -> Iterable[tuple[int, int]]:
                 yield i, j
 
 
+def _telling(windows: Windows, pairs: Iterable[tuple[int, int]]) -> list[int]:
+    """Numbers of the limits that took any hour of these pairs."""
+    lost = sum((windows.ledger.lost_hours[i, j].sum(axis=0) for i, j in pairs), np.zeros(len(windows.ledger.limits)))
+    return [int(k) for k in np.flatnonzero(lost > 0.0)]
+
+
 def windows_season(windows: Windows, target: str | None = None) -> TextTable:
     """Hours lost to each limit in the order of charging, and hours left, over the season."""
     ledger = windows.ledger
+    limits = _telling(windows, _pairs(windows, target))
     rows = tuple(
         (
             plain(ledger.targets[i]),
             plain(ledger.setups[j]),
-            *(f"{ledger.lost_hours[i, j, :, k].sum():.0f}" for k in range(len(ledger.limits))),
+            *(f"{ledger.lost_hours[i, j, :, k].sum():.0f}" for k in limits),
             f"{ledger.left_hours[i, j].sum():.0f}",
         )
         for i, j in _pairs(windows, target)
     )
-    numbers = frozenset(range(2, 3 + len(ledger.limits)))
-    note = "Hours of the season; an hour is charged to the first limit, from left to right, that forbids it."
-    columns = ("target", "setup", *ledger.limits, "left")
+    numbers = frozenset(range(2, 3 + len(limits)))
+    note = (
+        "Hours of the season; an hour is charged to the first limit, from left to right, that forbids it. "
+        "Limits that took no hour are left out."
+    )
+    columns = ("target", "setup", *(ledger.limits[k] for k in limits), "left")
     return TextTable("Where the hours went", columns, rows, numbers, note)
 
 
@@ -312,15 +348,20 @@ def windows_limits_by_month(windows: Windows, target: str) -> tuple[TextTable, .
     """For one target, a table a setup: hours lost to each limit and left, month by month."""
     ledger = windows.ledger
     i = ledger.targets.index(target)
-    numbers = frozenset(range(1, 2 + len(ledger.limits)))
 
     def one(j: int) -> TextTable:
+        limits = _telling(windows, [(i, j)])
         rows = tuple(
-            (month, *(hours(float(v)) for v in ledger.lost_hours[i, j, m]), hours(float(ledger.left_hours[i, j, m])))
+            (
+                month,
+                *(hours(float(ledger.lost_hours[i, j, m, k])) for k in limits),
+                hours(float(ledger.left_hours[i, j, m])),
+            )
             for m, month in enumerate(ledger.months)
         )
         title = f"{plain(target)} with {plain(ledger.setups[j])}"
-        return TextTable(title, ("month", *ledger.limits, "left"), rows, numbers)
+        columns = ("month", *(ledger.limits[k] for k in limits), "left")
+        return TextTable(title, columns, rows, frozenset(range(1, len(columns))))
 
     return tuple(one(j) for _, j in _pairs(windows, target))
 

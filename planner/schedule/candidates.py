@@ -6,10 +6,12 @@ A mode is a length of the look. Several modes of one night are alternatives: the
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
+from planner.campaign.array_setups import companions
 from planner.campaign.records import SetupRef, Target
 from planner.errors import PlanningError
 from planner.instruments import camera
@@ -18,7 +20,7 @@ from planner.prediction.look import LookErrors, look_errors
 from planner.prediction.look_rings import camera_seconds
 from planner.prediction.model import TargetModel
 from planner.prediction.tracks import track_of
-from planner.records import Floats, Ints, Mode, Track, Windows
+from planner.records import Bools, Floats, Ints, Mode, Track, Windows
 from planner.sky.array_windows import SLACK_HOURS
 from planner.sky.clock import ROTATIONS_PER_UT1_DAY
 
@@ -41,6 +43,7 @@ class Batch:
     sky: CameraSky | None
     track: Track | None = None
     share: float = 1.0
+    beside: tuple[tuple[SetupRef, Track], ...] = ()  # other bands that the look records
 
     def at(self, which: Ints) -> Batch:
         """The looks ``which``."""
@@ -70,7 +73,7 @@ def mode_track(target: Target, setup: SetupRef, windows: Windows, share: float) 
 
 
 def batches(model: TargetModel, setup: SetupRef, windows: Windows, rows: Ints, theta: Floats) -> list[Batch]:
-    """Candidates of every mode of a setup on windows ``rows``; what two modes have alike is in the shorter one only."""
+    """Candidates of every mode of a setup on windows ``rows``, shortest mode first."""
     if setup.receiver is not None:
         return [_of_array(model.target, setup, windows, rows, share) for share in setup.receiver.mode_shares]
     own = setup.camera
@@ -79,16 +82,12 @@ def batches(model: TargetModel, setup: SetupRef, windows: Windows, rows: Ints, t
     shaken = with_seeing(sky, setup, nights, len(theta))
     need = camera_seconds(model, theta, mjd, own, shaken, setup.name)
     found: list[Batch] = []
-    offered = np.zeros(len(rows))
     for share in own.mode_shares:
         seconds = np.clip(need * share, own.shortest_look_min * 60.0, own.longest_look_min * 60.0)
         seconds = np.ceil(seconds / 60.0) * 60.0
-        which = np.flatnonzero(seconds > offered)
         minutes = np.ceil(camera.look_minutes(own, seconds))
         start, end = windows.start_mjd[rows], windows.end_mjd[rows]
-        batch = Batch(setup, rows, nights, mjd, seconds, minutes, start, end, sky, None, share)
-        found.append(batch.at(which))
-        offered = np.maximum(offered, seconds)
+        found.append(Batch(setup, rows, nights, mjd, seconds, minutes, start, end, sky, None, share))
     return found
 
 
@@ -115,8 +114,16 @@ def _of_array(target: Target, setup: SetupRef, windows: Windows, rows: Ints, sha
     seconds = np.full(len(rows), track.look_hours * 3600.0 * receiver.on_source / members)
     return Batch(
         setup, rows, windows.night[rows], middle, np.minimum(seconds, minutes * 60.0 / members), minutes / members,
-        start, end, None, track, share,
+        start, end, None, track, share, bands_beside(target, setup, track),
     )  # fmt: skip
+
+
+def bands_beside(target: Target, setup: SetupRef, track: Track) -> tuple[tuple[SetupRef, Track], ...]:
+    """Other bands of a look, each with its own stations' track over the very hours of the look."""
+    if track.look_hours <= 0:
+        return ()
+    found = [(band, track_of(target, band, at=track)) for band in companions(setup)]
+    return tuple((band, beside) for band, beside in found if beside.look_hours > 0)
 
 
 def errors_of(model: TargetModel, theta: Floats, batch: Batch) -> LookErrors:
@@ -125,6 +132,38 @@ def errors_of(model: TargetModel, theta: Floats, batch: Batch) -> LookErrors:
     if sky is not None:
         sky = with_seeing(sky, batch.setup, batch.nights, len(theta))
     return look_errors(model, theta, batch.mjd, batch.setup, sky=sky, seconds=batch.seconds, track=batch.track)
+
+
+@dataclass(frozen=True)
+class Taught:
+    """What looks teach: T looks, B draws, F features, M rows a band."""
+
+    errors: LookErrors  # of the setup's own band
+    rows: Floats  # (B, T, bands x M, P) whitened derivatives
+    measurable: Bools  # (B, T, F) in any band
+
+
+def taught(model: TargetModel, theta: Floats, batch: Batch) -> Taught:
+    """Whitened derivatives of a batch: those of every band it records, one below the other.
+
+    Bands are independent given the parameters: what they share (the core's wander and shift) is among these.
+    """
+    errors = errors_of(model, theta, batch)
+    rows = [errors.whiten(model.derivatives(theta, batch.mjd, batch.setup.name))]
+    seen = errors.measurable
+    for setup, track in batch.beside:
+        other = look_errors(model, theta, batch.mjd, setup, track=track)
+        rows.append(other.whiten(model.derivatives(theta, batch.mjd, setup.name)))
+        seen = seen | other.measurable
+    return Taught(errors, np.concatenate(rows, axis=2), seen)
+
+
+def in_any_band(model: TargetModel, theta: Floats, batch: Batch, errors: LookErrors) -> Bools:
+    """What is measurable in the band of ``errors`` or in another one that the looks record, (B, T, F)."""
+    seen = errors.measurable
+    for setup, track in batch.beside:
+        seen = seen | look_errors(model, theta, batch.mjd, setup, track=track).measurable
+    return seen
 
 
 def one_a_night(batch: Batch) -> Ints:
@@ -138,12 +177,27 @@ def one_a_night(batch: Batch) -> Ints:
     return np.array(sorted(best.values()), dtype=np.int64)
 
 
+def offers(modes: Sequence[Batch]) -> list[Batch]:
+    """One look a night of each mode; a longer mode that comes out no longer than a shorter one is left out."""
+    found: list[Batch] = []
+    longest: dict[int, float] = {}
+    for mode in modes:
+        batch = mode.at(one_a_night(mode))
+        nights, seconds = batch.nights.tolist(), batch.seconds.tolist()
+        new = [i for i, (n, s) in enumerate(zip(nights, seconds, strict=True)) if s > longest.get(n, 0.0) + 0.5]
+        longest |= {nights[i]: seconds[i] for i in new}
+        if new:
+            found.append(batch.at(np.array(new, dtype=np.int64)))
+    return found
+
+
 def mode_of(setup: SetupRef, seconds: float, minutes: float, share: float = 1.0) -> Mode:
     """Describe how a look is taken."""
     word = SHARE_WORDS.get(share, f"x{share:g}")
     word = f" ({word})" if word else ""
     if setup.receiver is not None:
-        band, members = f"{setup.receiver.ghz:g} GHz", setup.receiver.interleaved_with
+        bands = [s.receiver.ghz for s in (setup, *companions(setup)) if s.receiver is not None]
+        band, members = f"{'+'.join(f'{ghz:g}' for ghz in bands)} GHz", setup.receiver.interleaved_with
         stint = f" of a {minutes * members / 60.0:.3g} h stint" if members > 1 else ""
         return Mode(f"{band} {minutes / 60.0:.3g} h{stint}{word}", band, seconds, minutes, 1, share)
     assert setup.camera is not None
@@ -156,6 +210,20 @@ def good_share(setup: SetupRef, night: str) -> float:
     """Chance that the weather serves a setup, in the month of a night's label."""
     needs = setup.camera.needs if setup.camera is not None else "clear"
     return float(setup.site.months.good(needs)[int(night[5:7]) - 1])
+
+
+def lasting(target: Target, batch: Batch, minutes: float) -> Batch:
+    """One look of the nearest mode, made to last as long as a fixed look does."""
+    setup = batch.setup
+    if setup.receiver is None:
+        return replace(batch, seconds=np.array([shutter_seconds(setup, minutes)]), minutes=np.array([minutes]))
+    receiver, members = setup.receiver, setup.receiver.interleaved_with
+    share = minutes * members / 60.0 / receiver.look_hours
+    if abs(share - batch.share) > 0.01 * batch.share:  # none of the modes: beam and noise of its own length
+        track = track_of(target, setup, share)
+        batch = replace(batch, track=track, share=share, beside=bands_beside(target, setup, track))
+    seconds = np.array([minutes * 60.0 * receiver.on_source])
+    return replace(batch, seconds=seconds, minutes=np.array([minutes]))
 
 
 def shutter_seconds(setup: SetupRef, minutes: float) -> float:

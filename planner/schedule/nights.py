@@ -15,15 +15,16 @@ import numpy as np
 
 from planner.errors import PlanningError
 from planner.records import Floats, Ints
-from planner.schedule.orders import SLACK_S, TooManyOrders, earliest_order
+from planner.schedule.orders import SLACK_S, TooManyOrders, earliest_deadline_order, earliest_order
 from planner.schedule.problem import Problem
 
 DAY_SECONDS = 86_400.0  # exact
+_NIGHT_OVER_MIN = 0.01  # minutes by which a window must be overfull before a night is called impossible
 _ROW_SLACK_MIN = 1e-3  # rows allow 0.06 s, so that fixed looks that touch by round-off stay allowed
 _RIGID_S = 2.0  # looks with less freedom than this stay at their earliest start (the clock below ticks in seconds)
 _WIDEST_DAYS = 1.5  # window rows longer than this never cut anything that shorter ones do not; our choice
 _EFFORT = 0.1  # deterministic seconds of CP-SAT spent on preferred moments (comfort only)
-_SURE_EFFORT = 60.0  # the same to decide a night with too many orders to search; none such is known
+_SURE_EFFORT = 5.0  # the same to decide a night with too many orders to search
 
 
 @dataclass(frozen=True)
@@ -105,6 +106,10 @@ def _broken(problem: Problem, slots: Ints, x: Floats, tolerance_min: float) -> I
 # ------------------------------------------------------------------ exact sequencing
 
 
+class Undecided(Exception):
+    """Whether a night fits could not be decided within the effort; it is then not used."""
+
+
 @dataclass(frozen=True)
 class Fit:
     """What sequencing found: starts of every look, or the looks that together cannot be done."""
@@ -119,6 +124,7 @@ class Sequencer:
     def __init__(self, problem: Problem) -> None:
         self.problem = problem
         self._known: dict[tuple[int, ...], dict[int, float] | tuple[int, ...]] = {}
+        self.undecided = False  # True once a night was refused because nobody could decide it in time
 
     def fit(self, slots: Iterable[int]) -> Fit:
         """Sequence any set of looks, telescope by telescope, group by group."""
@@ -138,8 +144,12 @@ class Sequencer:
 
     def _group(self, slots: tuple[int, ...]) -> dict[int, float] | tuple[int, ...]:
         if slots not in self._known:
-            starts = sequence(self.problem, slots)
-            self._known[slots] = starts if starts is not None else self._smallest(slots)
+            try:
+                starts = sequence(self.problem, slots)
+                self._known[slots] = starts if starts is not None else self._smallest(slots)
+            except Undecided:
+                self.undecided = True
+                self._known[slots] = slots
         return self._known[slots]
 
     def _smallest(self, slots: tuple[int, ...]) -> tuple[int, ...]:
@@ -147,8 +157,11 @@ class Sequencer:
         failing = list(slots)
         for k in slots:
             rest = [j for j in failing if j != k]
-            if rest and sequence(self.problem, rest, comfort=False) is None:
-                failing = rest
+            try:
+                if rest and sequence(self.problem, rest, comfort=False) is None:
+                    failing = rest
+            except Undecided:
+                continue  # the set stays larger than it need be
         return tuple(failing)
 
 
@@ -156,7 +169,8 @@ def sequence(problem: Problem, slots: Sequence[int], *, comfort: bool = True) ->
     """Return the start (MJD) of each look so that none overlap, or None when that cannot be.
 
     With ``comfort``, looks stand as near to their preferred moments as a small, deterministic effort finds (sum of
-    displacements of their middles). A look with under 2 s of freedom keeps its earliest start exactly.
+    displacements of their middles). A look with under 2 s of freedom keeps its earliest start exactly. Raises
+    Undecided when neither the order search nor CP-SAT can tell within their effort.
     """
     index = np.asarray(slots, dtype=np.int64)
     if index.size == 0:
@@ -175,6 +189,8 @@ def sequence(problem: Problem, slots: Sequence[int], *, comfort: bool = True) ->
         wish = np.clip((problem.best_mjd[index] - base) * DAY_SECONDS - 0.5 * length, early, late - length)
     if _clear_of_one_another(wish, length):
         starts: Floats | None = wish
+    elif any(True for _ in _broken(problem, index, np.ones(index.size), _NIGHT_OVER_MIN)):
+        starts = None  # a window row is broken: no order can work
     else:
         starts = _some_order(early, late, length)
         if starts is not None and comfort:
@@ -191,6 +207,9 @@ def _clear_of_one_another(start: Floats, length: Floats) -> bool:
 
 def _some_order(early: Floats, late: Floats, length: Floats) -> Floats | None:
     """Starts in seconds after the base, or None when no order works: exact either way."""
+    simple = earliest_deadline_order(early, late, length)
+    if simple is not None:
+        return simple
     try:
         return earliest_order(early, late, length)
     except TooManyOrders:
@@ -257,4 +276,6 @@ def _solved(cp_model: Any, model: Any, effort: float, *, surely: bool) -> Any:
         return solver
     if status == cp_model.INFEASIBLE or not surely:
         return None
+    if status == cp_model.UNKNOWN:
+        raise Undecided
     raise PlanningError(f"the night sequencer ended with status {solver.status_name(status)}; report this problem")

@@ -14,7 +14,7 @@ from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.quantities import wanted
 from planner.prediction.rings import RingModel
 from planner.records import Belief, Bools, Floats, GoalResult, Ints, Slot, Windows
-from planner.schedule.candidates import Batch, camera_sky, errors_of, mode_track
+from planner.schedule.candidates import Batch, bands_beside, camera_sky, mode_track, taught
 from planner.schedule.odds import GoalOdds, simulate_odds
 from planner.schedule.problem import CountPart, GoalPart, LearnPart, TargetPart
 from planner.schedule.slots import SlotBook, learn_part
@@ -40,16 +40,15 @@ def odds_part(
     """Return the part of a target at fresh ``draws`` (N, P), holding only the chosen looks, at their own times."""
     keep = book.columns[model.target.name]
     count = len(chosen.local)
-    observables = sum(len(f.observables) for f in model.features)
-    rows = np.zeros((len(draws), count, observables, len(keep)))
+    rows = np.zeros((len(draws), count, part.rows.shape[2], len(keep)))
     usable = np.zeros((len(draws), count, len(model.features)))
     slots = [book.slots[int(part.slots[i])] for i in chosen.local]
     for name, share in sorted({(slot.setup, slot.mode.share) for slot in slots}):
         which = np.array([i for i, slot in enumerate(slots) if (slot.setup, slot.mode.share) == (name, share)])
         batch = _batch_of(campaign, model, book, windows, [slots[i] for i in which], chosen.middle_mjd[which])
-        errors = errors_of(model, draws, batch)
-        rows[:, which] = errors.whiten(model.derivatives(draws, batch.mjd, name))[..., keep]
-        usable[:, which] = errors.measurable
+        what = taught(model, draws, batch)
+        rows[:, which, : what.rows.shape[2]] = what.rows[..., keep]
+        usable[:, which] = what.measurable
     goals: list[GoalPart] = []
     for (feature, goal), planned in zip(book.goals[model.target.name], part.goals, strict=True):
         if isinstance(goal, LooksGoal):
@@ -72,6 +71,7 @@ def _batch_of(
     """Chosen looks with one setup in one mode, at their own times."""
     setup, share = campaign.setup(slots[0].setup), slots[0].mode.share
     rows = book.window_rows[[slot.number for slot in slots]]
+    track = mode_track(model.target, setup, windows, share) if setup.is_array else None
     return Batch(
         setup=setup, rows=rows, nights=windows.night[rows], mjd=middle_mjd,
         seconds=np.array([slot.mode.exposure_s for slot in slots]),
@@ -79,7 +79,7 @@ def _batch_of(
         earliest_mjd=np.array([slot.earliest_start_mjd for slot in slots]),
         latest_mjd=np.array([slot.latest_end_mjd for slot in slots]),
         sky=None if setup.is_array else camera_sky(setup, windows, rows),
-        track=mode_track(model.target, setup, windows, share) if setup.is_array else None, share=share,
+        track=track, share=share, beside=() if track is None else bands_beside(model.target, setup, track),
     )  # fmt: skip
 
 
@@ -230,7 +230,8 @@ def goal_results(
 
 def unreachable(goal: LearnGoal, feature: FeatureModel, best: float, share: float) -> str:
     """What to say when all slots of the season together do not reach a goal often enough; empty when they do."""
-    if share >= goal.odds:
+    error = np.sqrt(max(share * (1.0 - share), 1.0 / REACH_DRAWS) / REACH_DRAWS)
+    if share + 2.0 * error >= goal.odds:  # two standard errors: not clearly below what is asked for
         return ""
     if share > 0:
         text = (
@@ -251,12 +252,12 @@ def unreachable(goal: LearnGoal, feature: FeatureModel, best: float, share: floa
 def _tie_of(feature: FeatureModel, learn: str) -> str:
     """Why an echo does not give a quantity alone, and what would; empty for quantities without such a tie."""
     if isinstance(feature, ArcletModel):
-        ties = {
+        of_arclets = {
             "age_yr": "place and motion leave age and inclination of the dust tied: narrow the slope's law",
             "distance_pc": "the motion gives distance only together with age and inclination: bring a distance",
             "source_direction_deg": "the direction of motion is turned by inclined dust: narrow slope_across_sigma",
         }
-        return ties.get(learn, "")
+        return of_arclets.get(learn, "")
     if not isinstance(feature, RingModel):
         return ""
     ties = {

@@ -15,7 +15,17 @@ from planner.prediction.look import LookErrors
 from planner.prediction.model import FeatureModel, TargetModel
 from planner.prediction.quantities import wanted
 from planner.records import SKY_CLASSES, Floats, Ints, Slot, Windows
-from planner.schedule.candidates import Batch, batches, errors_of, good_share, mode_of, one_a_night, shutter_seconds
+from planner.schedule.candidates import (
+    Batch,
+    batches,
+    errors_of,
+    good_share,
+    in_any_band,
+    lasting,
+    mode_of,
+    offers,
+    taught,
+)
 from planner.schedule.problem import CountPart, GoalPart, LearnPart, Problem, TargetPart
 from planner.units import mjd_of_date, mjd_of_iso
 
@@ -110,12 +120,9 @@ class SlotBuilder:
         long_enough: set[int] = set()
         measured: set[int] = set()
         found: list[_Found] = []
-        for mode in batches(model, setup, windows, allowed, chance_draws):
-            batch = mode.at(one_a_night(mode))
-            if not len(batch.rows):
-                continue
+        for batch in offers(batches(model, setup, windows, allowed, chance_draws)):
             wide = errors_of(model, chance_draws, batch)
-            chance = wide.measurable.any(axis=-1).mean(axis=0)
+            chance = in_any_band(model, chance_draws, batch, wide).any(axis=-1).mean(axis=0)
             for block in wide.blocked:
                 loss.reasons[f"{block.feature}: {block.reason}"] = float(block.mask.mean())
             good = np.flatnonzero(chance >= LEAST_CHANCE)
@@ -138,9 +145,8 @@ class SlotBuilder:
         plan_draws: Floats,
     ) -> list[_Found]:
         w = self.windows
-        errors = errors_of(model, plan_draws, batch)
-        rows = errors.whiten(model.derivatives(plan_draws, batch.mjd, setup.name))  # (B, T, M, P)
-        usable = errors.measurable.astype(float)  # (B, T, F)
+        what = taught(model, plan_draws, batch)
+        rows, usable = what.rows, what.measurable.astype(float)  # (B, T, M, P), (B, T, F)
         stations = 1.0 if batch.track is None else batch.track.chance_stations
         found = []
         for i, row in enumerate(batch.rows):
@@ -182,11 +188,9 @@ class SlotBuilder:
             raise PlanningError(f"{where}: no allocation accepts a {SKY_CLASSES[w.sky_class[inside[0]]]} sky there")
         offered = [b for b in batches(model, setup, w, inside[:1], chance_draws) if len(b.rows)]
         batch = min(offered, key=lambda b: abs(float(b.minutes[0]) - look.minutes))
-        seconds = batch.seconds if setup.is_array else np.array([shutter_seconds(setup, look.minutes)])
-        middle = np.array([(start + end) / 2])
-        batch = replace(batch, mjd=middle, seconds=seconds, minutes=np.array([look.minutes]))
+        batch = lasting(model.target, replace(batch, mjd=np.array([(start + end) / 2])), look.minutes)
         wide = errors_of(model, chance_draws, batch)
-        chance = wide.measurable.any(axis=-1).mean(axis=0)
+        chance = in_any_band(model, chance_draws, batch, wide).any(axis=-1).mean(axis=0)
         (found,) = self._slots(model, accounts[0], setup, batch, chance, _best_snr(wide), plan_draws)
         slot = replace(
             found.slot, earliest_start_mjd=start, latest_end_mjd=end, best_mjd=(start + end) / 2, fixed_look=number
@@ -199,7 +203,7 @@ class SlotBuilder:
         draws, count = len(plan_draws), len(found)
         observables = sum(len(f.observables) for f in model.features)
         if found:
-            rows = np.stack([item.rows for item in found], axis=1)
+            rows = np.stack(padded([item.rows for item in found]), axis=1)
             usable = np.stack([item.usable for item in found], axis=1)  # (B, K, F)
         else:
             rows = np.zeros((draws, 0, observables, model.size))
@@ -213,7 +217,7 @@ class SlotBuilder:
         )
         # modes of one night are alternatives, even where looks may follow one another within a night
         at_least = model.target.spacing.at_least_days
-        if any(item.slot.mode.share != 1.0 for item in found):
+        if any(item.slot.mode.share != 1.0 and not item.forced for item in found):
             at_least = max(at_least, LEAST_OF_MODES_DAYS)
         return TargetPart(
             name=model.target.name,
@@ -263,10 +267,17 @@ class SlotBuilder:
             earliest_mjd=np.array([s.earliest_start_mjd for s in slots], dtype=float),
             latest_mjd=np.array([s.latest_end_mjd for s in slots], dtype=float),
             limits=np.array([a.hours * 60.0 for a in self.campaign.file.allocations], dtype=float),
+            best_mjd=np.array([s.best_mjd for s in slots], dtype=float),
         )
         return SlotBook(
             tuple(slots), problem, self.losses, np.array(self.window_rows, dtype=np.int64), self.columns, self.goals
         )
+
+
+def padded(rows: Sequence[Floats]) -> list[Floats]:
+    """Rows (B, M, P) of looks brought to one M by rows of zeros, which teach nothing."""
+    most = max(r.shape[1] for r in rows)
+    return [np.pad(r, ((0, 0), (0, most - r.shape[1]), (0, 0))) if r.shape[1] < most else r for r in rows]
 
 
 def learn_part(model: TargetModel, feature: FeatureModel, goal: LearnGoal, weight: float, draws: Floats) -> LearnPart:

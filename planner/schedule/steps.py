@@ -92,7 +92,7 @@ class Work:
         gained: list[float] = []
         for count in range(HEURISTIC_ROUNDS):
             self.progress("looks", count / HEURISTIC_ROUNDS)
-            if self.clock.over() or not self._heuristic_round(first=count == 0):
+            if self.clock.over(_KEEP) or not self._heuristic_round(first=count == 0):
                 break
             gained.append(0.0 if self.prices is None else self.prices.value)
             if count >= 3 and gained[-1] - gained[-3] <= FLAT * abs(gained[-1]):
@@ -210,7 +210,7 @@ class Work:
         self._offer(self.master.greedy(order, values))
         choice = self.master.best(values, self.proof, self.clock.left())
         self._offer(choice.columns)
-        if all(self.complete):
+        if all(self.complete) and not self.master.sequencer.undecided:
             self.bound = min(self.bound, choice.bound * (1.0 + 1e-9) + 1e-12)
         if choice.stopped:
             self.clock.stopped = True
@@ -219,7 +219,7 @@ class Work:
         """Improve one target at a time inside what the others leave, then choose again if that helped."""
         problem, before = self.problem, self.value(self.proof)
         for t, (pricer, part) in enumerate(zip(self.pricers, problem.targets, strict=True)):
-            if self.complete[t] or self.clock.over():
+            if self.complete[t] or self.clock.over(_KEEP / 2):
                 continue
             others = self.master.slots([c for i, c in enumerate(self.proof) if i != t])
             used = np.bincount(problem.allocation[others], problem.charge[others], minlength=problem.limits.size)

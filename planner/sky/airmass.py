@@ -49,6 +49,20 @@ def rozenberg(sin_altitude: ArrayLike) -> Floats:
     return np.where(s < 0.0, np.nan, 1.0 / (up + 0.025 * np.exp(-11.0 * up)))
 
 
+def altitude_of_airmass_deg(airmass: ArrayLike) -> Floats:
+    """Geometric altitude (degrees, at least 0) at which the refracted Kasten & Young airmass has a value; any shape.
+
+    Bisection to 1e-9 degrees; 90 for values that only the zenith could have.
+    """
+    wanted = np.asarray(airmass, dtype=float)
+    low, high = np.zeros_like(wanted), np.full_like(wanted, 90.0)
+    for _ in range(38):
+        middle = 0.5 * (low + high)
+        above = kasten_young(middle + refraction_arcmin(middle) / 60.0) < wanted
+        low, high = np.where(above, low, middle), np.where(above, middle, high)
+    return 0.5 * (low + high)
+
+
 def scattering(altitude_deg: ArrayLike) -> Floats:
     """Airmass for light scattered in the air, (1 - 0.96 sin^2 z)^-0.5 (Krisciunas & Schaefer 1991, eq. 3)."""
     cos_h = np.cos(np.radians(np.asarray(altitude_deg, dtype=float)))

@@ -30,6 +30,7 @@ class ArrayRows:
     sun_separation_deg: Floats
     lost_altitude_hours: Floats  # (dates,)
     lost_sun_hours: Floats  # (dates,)
+    lost_session_hours: Floats  # (dates,) those on which the array does not observe in this band
     left_hours: Floats  # (dates,)
 
     def __post_init__(self) -> None:
@@ -64,18 +65,21 @@ def array_rows(
 
     A window is the look at its best place in the stretch with enough stations, with ``SLACK_HOURS`` on either side
     as far as the stretch goes. A date on which the Sun is closer than the receiver allows at the middle of the
-    look has none. Each date counts 24 hours; those outside the stretch are charged to the altitude.
+    look has none, nor has one without a session of this receiver. Each date counts 24 hours; those outside the
+    stretch are charged to the altitude.
     """
     dates = np.array([mjd_of_date(day) for day in evenings])
-    up_hours = np.full(dates.size, min(24.0, track.hours_up))
+    in_session = np.array([receiver.sessions is None or day in receiver.sessions for day in evenings], dtype=bool)
+    where_open = np.where(in_session, 24.0, 0.0)
+    up_hours = np.where(in_session, min(24.0, track.hours_up), 0.0)
     if track.look_hours <= 0.0:
         none, zero = np.zeros(0), np.zeros(dates.size)
-        return ArrayRows(np.zeros(0, dtype=np.int64), none, none, none, none, zero + 24.0, zero, zero)
+        return ArrayRows(np.zeros(0, dtype=np.int64), none, none, none, none, where_open, zero, 24.0 - where_open, zero)
     middle_gha = track.start_from_transit_hours + 0.5 * track.look_hours
     middle = _when(dates, field, star, middle_gha)
     sun = vectors_km("sun", middle)
     apart = separation_deg(_pairs(field, star, middle), sun / np.linalg.norm(sun, axis=1, keepdims=True))
-    ok = apart >= receiver.sun_no_closer_deg
+    ok = in_session & (apart >= receiver.sun_no_closer_deg)
     before, after = _slack(stations, track)
     day = 1.0 / (24.0 * ROTATIONS_PER_UT1_DAY)  # days in a sidereal hour
     half = 0.5 * track.look_hours
@@ -85,8 +89,9 @@ def array_rows(
         end_mjd=(middle + (half + after) * day)[ok],
         middle_mjd=middle[ok],
         sun_separation_deg=apart[ok],
-        lost_altitude_hours=24.0 - up_hours,
+        lost_altitude_hours=where_open - up_hours,
         lost_sun_hours=np.where(ok, 0.0, up_hours),
+        lost_session_hours=24.0 - where_open,
         left_hours=np.where(ok, up_hours, 0.0),
     )
 

@@ -3,19 +3,19 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from planner.campaign.records import CameraSetup, SetupRef, Shutdown, Site
+from planner.campaign.records import SetupRef, Site
 from planner.errors import InputError
-from planner.records import Bools, Floats, Ints, lock
+from planner.records import LIMITS, Bools, Floats, Ints, lock
 from planner.sky import intervals as iv
 from planner.sky.airmass import kasten_young, refraction_arcmin
+from planner.sky.calendar import Calendar, calendar_of
 from planner.sky.clock import ROTATIONS_PER_UT1_DAY, earth_rotation_angle
-from planner.sky.directions import SiteFrame, StarField, site_frame
-from planner.sky.horizon import horizon_deg
+from planner.sky.limits import DIP_LIMITS, STAR_LIMITS, Match, SkyGrid
 from planner.sky.moonlight import sky_mag_arcsec2
 from planner.sky.nights import noon_of
 from planner.sky.sun_moon import (
@@ -31,9 +31,7 @@ from planner.units import DAY_S
 STEP_MINUTES = 5
 CELLS_A_NIGHT = 24 * 60 // STEP_MINUTES
 STEP_DAYS = 1.0 / CELLS_A_NIGHT
-CHUNK_CELLS = 2_000_000  # targets x times held at once: 16 MB an array
 SHORTEST_S = 1.0  # pieces shorter than the accuracy of the edges are dropped
-LIMIT_ORDER = ("daylight and twilight", "shutdown", "altitude", "Sun keep-out", "Moon")
 
 
 @dataclass(frozen=True)
@@ -62,19 +60,18 @@ class SetupWindows:
     """Rows of one setup with its ledger by night."""
 
     rows: Rows
-    lost_hours: Floats  # (targets, nights, limits), limits as in LIMIT_ORDER
+    lost_hours: Floats  # (targets, nights, limits), limits as in LIMITS
     left_hours: Floats  # (targets, nights)
 
     def __post_init__(self) -> None:
         lock(self)
 
 
-class SiteSky:
+class SiteSky(SkyGrid):
     """The sky of one site over consecutive nights, on a grid of 5 minutes from the first noon to the last."""
 
     def __init__(self, site: Site, evenings: Sequence[dt.date], ra_deg: Floats, dec_deg: Floats) -> None:
         """Prepare grid, Sun, Moon and star directions; positions are ICRS at the middle of the season."""
-        self.site = site
         self.noons = np.array([noon_of(day, site.longitude_deg, site.time_zone) for day in evenings])
         if (np.abs(np.diff(self.noons) - 1.0) > 1e-6).any():
             raise InputError(
@@ -83,64 +80,24 @@ class SiteSky:
             )
         self.evenings = tuple(evenings)
         self.count = CELLS_A_NIGHT * len(evenings) + 1
-        self.grid = self.noons[0] + np.arange(self.count) * STEP_DAYS
-        self.frame = self._frame(self.grid)
-        self.sun = seen_from("sun", self.grid, self.frame)
-        self.moon = seen_from("moon", self.grid, self.frame)
-        self.field = StarField(ra_deg, dec_deg, self.grid)
-        place = (site.longitude_deg, site.latitude_deg, site.height_m)
-        moon_times, _ = moon_crossings(float(self.grid[0]), float(self.grid[-1]), 0.0, *place)
+        super().__init__(site, self.noons[0] + np.arange(self.count) * STEP_DAYS, ra_deg, dec_deg)
+        moon_times, _ = moon_crossings(float(self.grid[0]), float(self.grid[-1]), 0.0, *self.place)
         self.cuts = np.sort(np.concatenate([self.noons, moon_times]))
-
-    def _frame(self, mjd: Floats) -> SiteFrame:
-        return site_frame(mjd, self.site.longitude_deg, self.site.latitude_deg, self.site.height_m)
-
-    def chunks(self, count: int) -> Iterator[slice]:
-        """Slices of target rows small enough to hold."""
-        step = max(1, CHUNK_CELLS // self.count)
-        for i in range(0, count, step):
-            yield slice(i, min(i + step, count))
-
-    # -------------------------------------------------------------- limits
-
-    def limits(self, camera: CameraSetup, rows: slice) -> list[iv.Limit]:
-        """Limits of a setup in the order in which hours are charged (shutdowns, by night, come apart)."""
-        up, east, north, sun, moon = self.field.project(
-            self.grid, self.frame.zenith, self.frame.east, self.frame.north, self.sun.unit, self.moon.unit, rows=rows
-        )
-        night = float(np.sin(np.radians(camera.sun_below_deg)))
-        sun_off, moon_off = (
-            float(np.cos(np.radians(x))) for x in (camera.sun_no_closer_deg, camera.moon_no_closer_deg)
-        )
-        return [
-            iv.limit("daylight and twilight", lambda s: night - s, self.sun.sin_altitude[None, :]),
-            self._altitude_limit(camera.lowest_altitude_deg, up, east, north),
-            iv.limit("Sun keep-out", lambda c: sun_off - c, sun),
-            # the Moon's limit holds while it is down as well: a look must not depend on the minute of moonset
-            iv.limit("Moon", lambda c: moon_off - c, moon),
-        ]
-
-    def _altitude_limit(self, lowest_deg: float, up: Floats, east: Floats, north: Floats) -> iv.Limit:
-        low = float(np.sin(np.radians(lowest_deg)))
-        points = self.site.horizon
-        if not points or max(height for _, height in points) <= lowest_deg:
-            return iv.limit("altitude", lambda s: s - low, up)
-
-        def margin(s: Floats, e: Floats, n: Floats) -> Floats:
-            skyline = horizon_deg(points, np.degrees(np.arctan2(e, n)))
-            return s - np.maximum(low, np.sin(np.radians(skyline)))
-
-        return iv.limit("altitude", margin, up, east, north)
 
     # -------------------------------------------------------------- one setup
 
-    def windows(self, setup: SetupRef, which: Ints) -> SetupWindows:
-        """Windows and ledger of a setup for the targets ``which`` (indices); others get no rows and no hours."""
+    def windows(
+        self, setup: SetupRef, which: Ints, *, match: Match | None = None, extra: Floats | None = None
+    ) -> SetupWindows:
+        """Windows and ledger of a setup for the targets ``which`` (indices); others get no rows and no hours.
+
+        ``match``: bounds of the templates; ``extra``: (len(which), times of the grid) margin of further limits.
+        """
         camera = setup.camera
         if camera is None:
             raise ValueError(f"{setup.name} is not a camera")
-        shut = self._shut(setup.shutdowns)
-        lost = np.zeros((len(self.field), len(self.evenings), len(LIMIT_ORDER)))
+        calendar = calendar_of(setup, self.evenings)
+        lost = np.zeros((len(self.field), len(self.evenings), len(LIMITS)))
         left = np.zeros((len(self.field), len(self.evenings)))
         parts = []
         wanted = np.zeros(len(self.field), dtype=bool)
@@ -148,49 +105,64 @@ class SiteSky:
         for rows in self.chunks(len(self.field)):
             if not wanted[rows].any():
                 continue
-            limits = self.limits(camera, rows)
+            limits = self.limits(camera, rows, match, self._extra(extra, wanted, rows))
             row, start, end = self._intervals(limits, rows.stop - rows.start)
             keep = wanted[rows][row]
             parts.append((row[keep] + rows.start, start[keep], end[keep]))
-            lost[rows], left[rows] = self._ledger(limits, shut, rows.stop - rows.start)
+            lost[rows], left[rows] = self._ledger(limits, calendar, rows.stop - rows.start)
         lost[~wanted], left[~wanted] = 0.0, 0.0
         row, start, end = (np.concatenate(p) for p in zip(*parts, strict=True)) if parts else _nothing()
+        row, start, end = calendar.free(row, start, end)
+        keep = (end - start) * DAY_S >= SHORTEST_S
+        row, start, end = row[keep], start[keep], end[keep]
         night = np.floor(0.5 * (start + end) - self.noons[0]).astype(np.int64) if row.size else row
-        keep = ~shut[night]
+        keep = calendar.open[night]
         return SetupWindows(
             self._columns(setup, row[keep].astype(np.int64), night[keep], start[keep], end[keep]), lost, left
         )
 
-    def _shut(self, shutdowns: Sequence[Shutdown]) -> Bools:
-        return np.array([any(s.first <= day <= s.last for s in shutdowns) for day in self.evenings], dtype=bool)
+    def _extra(self, extra: Floats | None, wanted: Bools, rows: slice) -> Floats | None:
+        """Margin of further limits for a chunk of rows; 1 where a row is not asked for."""
+        if extra is None:
+            return None
+        out = np.ones((rows.stop - rows.start, self.count))
+        number = np.cumsum(wanted) - 1
+        out[wanted[rows]] = extra[number[rows][wanted[rows]]]
+        return out
 
     def _intervals(self, limits: list[iv.Limit], rows: int) -> tuple[Ints, Floats, Floats]:
         """Intervals (row, start, end) in MJD, cut at noon, moonrise and moonset (Moon's centre at 0 deg)."""
         found = iv.allowed_intervals(limits, rows, self.count)
-        altitude = next(item for item in limits if item.name == "altitude")
-        others = [item for item in limits if item is not altitude]
-        zero = np.zeros_like(altitude.values)
-        found = iv.add_passes(found, iv.hidden_extrema(altitude.values, zero, passes=True), others)
-        found = iv.remove_dips(found, iv.hidden_extrema(altitude.values, zero, passes=False))
-        row, start, end = iv.split(
-            found[0], self.grid[0] + found[1] * STEP_DAYS, self.grid[0] + found[2] * STEP_DAYS, self.cuts
-        )
-        keep = (end - start) * DAY_S >= SHORTEST_S
-        return row[keep], start[keep], end[keep]
+        for item in limits:
+            zero = np.zeros_like(item.values)
+            if item.name in STAR_LIMITS:
+                others = [other for other in limits if other is not item]
+                found = iv.add_passes(found, iv.hidden_extrema(item.values, zero, passes=True), others)
+            if item.name in DIP_LIMITS:
+                found = iv.remove_dips(found, iv.hidden_extrema(item.values, zero, passes=False))
+        return iv.split(found[0], self.grid[0] + found[1] * STEP_DAYS, self.grid[0] + found[2] * STEP_DAYS, self.cuts)
 
-    def _ledger(self, limits: list[iv.Limit], shut: Bools, rows: int) -> tuple[Floats, Floats]:
+    def _ledger(self, limits: list[iv.Limit], calendar: Calendar, rows: int) -> tuple[Floats, Floats]:
         """Hours lost to each limit (rows, nights, limits) and left (rows, nights), by middles of 5-minute cells."""
         nights = len(self.evenings)
-        by_name = {item.name: item for item in limits}
+        by_name = {item.name: iv.midpoint_ok(item.values) for item in limits}
+        taken = calendar.is_busy(self.grid[:-1] + 0.5 * STEP_DAYS).reshape(1, nights, CELLS_A_NIGHT)
+        by_night = {
+            "shutdown": ~calendar.shut[None, :, None],
+            "not mounted": ~calendar.unmounted[None, :, None],
+            "busy": ~(taken | calendar.busy[None, :, None]),
+        }
         still = np.ones((rows, nights, CELLS_A_NIGHT), dtype=bool)
-        lost = np.empty((rows, nights, len(LIMIT_ORDER)))
+        lost = np.zeros((rows, nights, len(LIMITS)))
         before = np.full((rows, nights), CELLS_A_NIGHT)
-        for k, name in enumerate(LIMIT_ORDER):
-            if name == "shutdown":
-                still &= ~shut[None, :, None]
-            else:
-                ok = iv.midpoint_ok(by_name[name].values)
+        for k, name in enumerate(LIMITS):
+            if name in by_night:
+                still &= by_night[name]
+            elif name in by_name:
+                ok = by_name[name]
                 still &= ok.reshape(ok.shape[0], nights, CELLS_A_NIGHT)
+            else:
+                continue
             after = np.count_nonzero(still, axis=2)
             lost[:, :, k] = (before - after) * (STEP_MINUTES / 60.0)
             before = after
@@ -217,7 +189,7 @@ class SiteSky:
             moon.altitude_deg,
             lit,
             separation_deg(star, sun.unit.T),
-            self._sky_class(lit, start, end),
+            self._sky_class(lit, night, start, end),
             self._sky_mag(setup, altitude, moon, separation, best),
         )
 
@@ -230,11 +202,18 @@ class SiteSky:
         heights = [(self.field.pairs(row, t).T * self._frame(t).zenith).sum(axis=0) for t in (start, end)]
         return np.where(transit <= end, transit, np.where(heights[1] > heights[0], end, start))
 
-    def _sky_class(self, lit: Floats, start: Floats, end: Floats) -> Ints:
-        """0 dark, 1 grey, 2 bright: by whether the Moon is up in the middle, and its illuminated fraction."""
-        middle = 0.5 * (start + end)
-        moon_up = seen_from("moon", middle, self._frame(middle)).sin_altitude > 0.0
+    def _sky_class(self, lit: Floats, night: Ints, start: Floats, end: Floats) -> Ints:
+        """0 dark, 1 grey, 2 bright: by whether the Moon is up in the middle, and its illuminated fraction.
+
+        By night: by the illuminated fraction at local mean midnight alone.
+        """
         rule = self.site.sky_classes
+        if rule.by == "night":
+            lit = moon_illumination(self.noons[night] + 0.5)
+            moon_up = np.ones(lit.shape, dtype=bool)
+        else:
+            middle = 0.5 * (start + end)
+            moon_up = seen_from("moon", middle, self._frame(middle)).sin_altitude > 0.0
         by_phase = np.where(lit < rule.dark_below, 0, np.where(lit < rule.grey_below, 1, 2))
         return np.where(moon_up, by_phase, 0).astype(np.int64)
 

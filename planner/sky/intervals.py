@@ -15,6 +15,8 @@ import numpy as np
 
 from planner.records import Bools, Floats, Ints
 
+Margin = Callable[..., Floats]
+
 
 @dataclass(frozen=True)
 class Limit:
@@ -26,11 +28,11 @@ class Limit:
 
     name: str
     samples: tuple[Floats, ...]
-    margin: Callable[..., Floats]
+    margin: Margin
     values: Floats
 
 
-def limit(name: str, margin: Callable[..., Floats], *samples: Floats) -> Limit:
+def limit(name: str, margin: Margin, *samples: Floats) -> Limit:
     """Make a limit and evaluate its margin at every sample."""
     return Limit(name, samples, margin, margin(*samples))
 

@@ -36,6 +36,8 @@ class StationTrack:
     stretch_hours: float  # its length; 0 if never enough, 24 if always
     look_start_hours: float  # best start of the look, on the same scale (may pass 24)
     look_hours: float  # asked for, or the stretch if that is shorter
+    elevation_deg: Floats  # (S, T)
+    reliability: Floats  # (S,) chance to take part
 
     def __post_init__(self) -> None:
         lock(self)
@@ -92,9 +94,13 @@ def station_elevation_deg(station: Station, dec_deg: float, gha_hours: Floats) -
 
 
 def station_up(station: Station, dec_deg: float, gha_hours: Floats) -> Bools:
-    """True while a target is above the station's lowest elevation and its horizon, (T,)."""
+    """True while a target is above the station's lowest elevation and horizon and inside its hour angles, (T,)."""
     elevation, azimuth = station_elevation_deg(station, dec_deg, gha_hours)
     up = elevation >= station.lowest_elevation_deg
+    if station.hour_angle_deg is not None:
+        low, high = station.hour_angle_deg
+        here = 15.0 * np.asarray(gha_hours, dtype=float) + station.longitude_deg
+        up &= (here - low) % 360.0 <= high - low
     if station.horizon:
         up &= elevation >= horizon_deg(station.horizon, azimuth)
     return up
@@ -125,8 +131,10 @@ def station_track(site: ArraySite, receiver_name: str, dec_deg: float, look_hour
     stations = tuple(s for s in site.stations if receiver_name in s.sefd_jy)
     gha = np.arange(STEPS, dtype=np.float64) * STEP_HOURS
     up = np.zeros((len(stations), STEPS), dtype=np.bool_)
-    for row, station in zip(up, stations, strict=True):
-        row[:] = station_up(station, dec_deg, gha)
+    elevation = np.zeros((len(stations), STEPS))
+    for i, station in enumerate(stations):
+        up[i] = station_up(station, dec_deg, gha)
+        elevation[i] = station_elevation_deg(station, dec_deg, gha)[0]
     n_up = up.sum(axis=0)
     start, steps = longest_run(n_up >= site.least_stations)
     look_steps = min(round(wanted / STEP_HOURS), steps)
@@ -144,6 +152,8 @@ def station_track(site: ArraySite, receiver_name: str, dec_deg: float, look_hour
         stretch_hours=steps * STEP_HOURS,
         look_start_hours=look_start * STEP_HOURS,
         look_hours=look_steps * STEP_HOURS,
+        elevation_deg=elevation,
+        reliability=np.array([s.reliability for s in stations], dtype=float),
     )
 
 

@@ -85,7 +85,8 @@ def test_percent_is_refused_exactly_where_a_quantity_may_be_0_or_below():
             refused.add(quantity.name)
         else:
             assert LearnGoal(learn=quantity.name, to="5 %").to == Tolerance(5, "%")
-    assert refused == {"slope_east", "slope_north", "tilt_deg", "pa_deg", "core_crossing", "ejection"}
+    angles = {"pa_deg", "tilt_deg", "source_direction_deg"}
+    assert refused == {"slope_east", "slope_north", "core_crossing", "ejection", *angles}
 
 
 @pytest.mark.parametrize(

@@ -19,7 +19,7 @@ FAULTS = {
         "lastin_days: 60",
         "lastin_days",
         r"outburst\.lastin_days: unknown key 'lastin_days'; did you mean 'lasting_days'\? "
-        r"\(allowed: lasting_days, peak, peak_mag\)",
+        r"\(allowed: lasting_days, light_curve, peak, peak_mag, pulses\)",
     ),
     "unknown key at the top": (
         "campaign.yaml",
@@ -47,7 +47,8 @@ FAULTS = {
         "- ring: Reed ring",
         "- rings: Reed ring",
         "rings",
-        r"features\[0\]\.rings: unknown kind of feature 'rings'; did you mean 'ring'\? \(allowed: knot, pair, ring\)",
+        r"features\[0\]\.rings: unknown kind of feature 'rings'; did you mean 'ring'\? "
+        r"\(allowed: arclet, knot, pair, ring\)",
     ),
     "misspelt kind of goal": (
         "reed.yaml",
@@ -625,7 +626,7 @@ def test_a_site_file_must_be_a_place_or_an_array(folder):
     with pytest.raises(UnknownName, match=r"hill\.yaml:1, sit: unknown key 'sit'; did you mean 'site'"):
         read_site(path)
     path.write_text("longitude_deg: 3\n")
-    with pytest.raises(InputError, match="has neither 'site' nor 'array'"):
+    with pytest.raises(InputError, match="has neither 'site', 'array' nor 'spacecraft'"):
         read_site(path)
     path.write_text("- 3\n")
     with pytest.raises(InputError, match=r"hill\.yaml:1: got a list, needs a mapping of fields"):

@@ -345,3 +345,26 @@ def test_glare_radius_broadcasts():
 def test_glare_refuses_an_image_without_width():
     with pytest.raises(DomainError, match=r"fwhm_arcsec: got 0.0, needs a value above 0"):
         camera.glare_radius_arcsec(setup_of(), 12.0, 25.0, 0.0)
+
+
+def test_a_template_of_equal_depth_counts_the_background_twice() -> None:
+    """Sky, dark and read noise of the template: the same as sky_counts 2 when time and frames are the same."""
+    base = {"source_e_s": 3.0, "sky_e_s_pix": 20.0, "pixels": 50.0, "dark_e_s": 0.5, "read_noise_e": 6.0, "frames": 4}
+    twice = camera.snr(seconds=900.0, sky_counts=2.0, **base)
+    assert camera.snr(seconds=900.0, template_s=900.0, template_frames=4, **base) == pytest.approx(twice, rel=1e-12)
+
+
+def test_a_template_adds_one_plus_t_over_its_time_of_the_sky() -> None:
+    """Sky alone: variance n B t (1 + t/T), closed form."""
+    found = camera.snr(1.0, 30.0, 600.0, 100.0, template_s=[150.0, 600.0, 6000.0])
+    expected = 600.0 / np.sqrt(600.0 + 100.0 * 30.0 * 600.0 * (1.0 + 600.0 / np.array([150.0, 600.0, 6000.0])))
+    assert found == pytest.approx(expected, rel=1e-12)
+
+
+def test_seconds_with_a_template_are_the_inverse_of_the_ratio_and_nan_where_it_is_too_shallow() -> None:
+    light = {"source_e_s": 20.0, "sky_e_s_pix": 30.0, "pixels": 100.0, "read_noise_e": 5.0}
+    template = {"template_s": np.array([300.0, 3000.0]), "template_frames": np.array([1, 10])}
+    ceiling = camera.snr(seconds=1e12, **light, **template)
+    seconds = camera.seconds_for_snr(0.7 * ceiling, **light, **template)
+    assert camera.snr(seconds=seconds, **light, **template) == pytest.approx(0.7 * ceiling, rel=1e-9)
+    assert np.isnan(camera.seconds_for_snr(1.01 * ceiling, **light, **template)).all()

@@ -286,3 +286,17 @@ def test_shapes_follow_the_input(shape):
         100.0),
     ):  # fmt: skip
         assert np.shape(found) == shape
+
+
+@given(
+    east=st.floats(-10, 10), north=st.floats(-10, 10), major=st.floats(0.1, 5), share=st.floats(0.1, 1),
+    pa=st.floats(-90, 90),
+)  # fmt: skip
+@settings(max_examples=40, deadline=None)
+def test_a_separation_in_beams_is_its_length_over_the_cut_in_its_own_direction(
+    east: float, north: float, major: float, share: float, pa: float
+) -> None:
+    length = np.hypot(east, north)
+    cut = radio.cut_fwhm(major, share * major, pa, np.degrees(np.arctan2(east, north)))
+    found = radio.separation_in_beams(east, north, major, share * major, pa)
+    assert found == pytest.approx(length / cut, rel=1e-9, abs=1e-12)

@@ -8,7 +8,6 @@ import numpy as np
 import pytest
 
 from planner.campaign.records import Campaign, SetupRef
-from planner.instruments import interferometer
 from planner.prediction.curves import quantiles, reference_sky
 from planner.prediction.look import LookErrors, look_errors
 from planner.prediction.look_rings import camera_seconds
@@ -83,25 +82,6 @@ def test_minutes_reach_the_wanted_snr_in_84_of_100_draws(
     snr = look_errors(model, theta, MJD, free, sky=sky, seconds=seconds).snr[..., 0]
     share = (snr >= camera.snr_wanted * (1 - 1e-6)).mean(axis=0)
     assert share == pytest.approx(np.full(len(MJD), 0.84), abs=0.01)  # one draw of 512 either way, and rounding
-
-
-def test_a_knot_inside_half_a_beam_is_not_measurable_and_blends_up_to_one_and_a_half(
-    demo_campaign: Campaign, models: Mapping[str, TargetModel], tracks: Mapping[str, Track]
-) -> None:
-    model, ref = models["Tern"], demo_campaign.setup("cairn-array/43ghz")
-    theta = model.belief(256, 5, "test").draws
-    track = tracks["cairn-array/43ghz"]
-    errors = look_errors(model, theta, MJD, ref, track=track)
-    spot = model.features[0].spot_states(theta, MJD, 43.0)[0]  # type: ignore[union-attr]
-    cut = interferometer.cut_fwhm(track.beam_major_mas, track.beam_minor_mas, track.beam_pa_deg, spot.pa_deg)
-    beams = spot.separation_mas / cut
-    assert not errors.measurable[..., 0][beams <= 0.5].any()
-    assert errors.measurable[..., 0][(beams > 0.5) & (errors.snr[..., 0] > 5.0)].all()
-    clear, mixed = beams > 1.5, (beams > 0.5) & (beams < 1.0)
-    assert mixed.any()
-    assert clear.any()
-    # variance is 1 / (beams - 0.5) times larger: at least twice inside one beam at equal S/N
-    assert np.median(errors.sigma[..., 0][mixed]) > 1.4 * np.median(errors.sigma[..., 0][clear])
 
 
 def test_errors_along_the_beam_axes_become_one_covariance_on_the_sky(

@@ -9,7 +9,7 @@ import pytest
 
 from planner.physics import echo
 from planner.prediction.knots import KnotModel, PairModel
-from planner.prediction.model import TargetModel
+from planner.prediction.model import STEP, TargetModel
 from planner.prediction.rings import RingModel, sectors
 from planner.units import YEAR_DAYS, mjd_of_date
 
@@ -37,7 +37,9 @@ def test_derivatives_agree_with_richardson_extrapolation(models: Mapping[str, Ta
             estimates.append((high - low) / (2 * h * model.sigma[j]))
         exact = (4 * estimates[1] - estimates[0]) / 3
         scale = np.nanmax(np.abs(exact)) + 1e-12
-        assert found[..., j] == pytest.approx(exact, abs=2e-7 * scale, nan_ok=True), (name, j)
+        # a few roundings of the observable itself, over the step
+        rounding = 4 * np.finfo(float).eps * np.nanmax(np.abs(high)) / (STEP * model.sigma[j])
+        assert found[..., j] == pytest.approx(exact, abs=2e-7 * scale + rounding, nan_ok=True), (name, j)
 
 
 def test_an_untilted_whole_ring_has_the_closed_form_radius_in_every_sector(models: Mapping[str, TargetModel]) -> None:
@@ -47,7 +49,7 @@ def test_an_untilted_whole_ring_has_the_closed_form_radius_in_every_sector(model
     theta = np.concatenate([b.moments()[0] for b in model.blocks])[None, :]  # prior mean: no tilt, no offsets
     radii = ring.observe(theta, MJD)[0]
     delay = MJD - mjd_of_date("2021-05-20")
-    depth = ring.depth_pc(theta, delay)[0]
+    depth = ring.shape.depth_pc(theta, delay)[0]
     expected = echo.sheet_ring(delay, depth, 6100.0).radius_arcsec
     assert radii.shape == (4, 8)
     assert radii == pytest.approx(np.repeat(np.asarray(expected)[:, None], 8, axis=1), rel=1e-9)
@@ -58,8 +60,8 @@ def test_a_nearer_side_moves_the_ring_that_way(models: Mapping[str, TargetModel]
     ring = model.features[0]
     assert isinstance(ring, RingModel)
     theta = np.concatenate([b.moments()[0] for b in model.blocks])[None, :]
-    assert ring.slope_east.index is not None
-    theta[0, ring.slope_east.index] = 0.4
+    assert ring.shape.slope_east.index is not None
+    theta[0, ring.shape.slope_east.index] = 0.4
     radii = ring.observe(theta, MJD[:1])[0, 0]
     east, west = radii[np.argmin(np.abs(ring.pa_deg - 90))], radii[np.argmin(np.abs(ring.pa_deg - 270))]
     assert east > west + 1.0
@@ -96,13 +98,13 @@ def test_a_knot_without_acceleration_is_ballistic_and_its_speed_is_that_of_the_r
     theta = np.concatenate([b.moments()[0] for b in model.blocks])[None, :]
     position = knot.offset_mas(theta, MJD)[0]
     years = (MJD - mjd_of_date("2026-06-10") - 0.5) / YEAR_DAYS
-    assert position == pytest.approx(years[:, None] * theta[0, list(knot.velocity)], rel=1e-12)
-    assert knot.along.index is not None
-    theta[0, knot.along.index] = 0.15
+    assert position == pytest.approx(years[:, None] * theta[0, list(knot.path.velocity)], rel=1e-12)
+    assert knot.path.along.index is not None
+    theta[0, knot.path.along.index] = 0.15
     h = 0.5
-    around = knot.offset_mas(theta, np.array([knot.reference_mjd - h, knot.reference_mjd + h]))[0]
+    around = knot.offset_mas(theta, np.array([knot.path.reference_mjd - h, knot.path.reference_mjd + h]))[0]
     velocity = (around[1] - around[0]) / (2 * h / YEAR_DAYS)
-    assert velocity == pytest.approx(theta[0, list(knot.velocity)], rel=1e-9)
+    assert velocity == pytest.approx(theta[0, list(knot.path.velocity)], rel=1e-9)
 
 
 def test_acceleration_across_turns_the_path_from_north_through_east(models: Mapping[str, TargetModel]) -> None:
@@ -110,11 +112,11 @@ def test_acceleration_across_turns_the_path_from_north_through_east(models: Mapp
     knot = model.feature("Tern K2")
     assert isinstance(knot, KnotModel)
     theta = np.concatenate([b.moments()[0] for b in model.blocks])[None, :]
-    assert knot.across.index is not None
-    theta[0, knot.across.index] = 0.15
-    late = np.array([knot.reference_mjd + 100.0, knot.reference_mjd + 101.0])
+    assert knot.path.across.index is not None
+    theta[0, knot.path.across.index] = 0.15
+    late = np.array([knot.path.reference_mjd + 100.0, knot.path.reference_mjd + 101.0])
     step = np.diff(knot.offset_mas(theta, late)[0], axis=0)[0]
-    straight = theta[0, list(knot.velocity)]
+    straight = theta[0, list(knot.path.velocity)]
     turn = np.degrees(np.arctan2(step[0], step[1]) - np.arctan2(straight[0], straight[1]))
     assert turn == pytest.approx(np.degrees(np.arctan(0.15 * 100.5 / YEAR_DAYS)), rel=1e-6)  # closed form, positive
 
@@ -126,9 +128,10 @@ def test_core_wander_is_common_to_all_knots_of_an_epoch_and_new_every_thirty_day
     assert model.wander is not None
     theta = np.concatenate([b.moments()[0] for b in model.blocks])[None, :]
     start = mjd_of_date("2027-01-04")
-    theta[0, model.wander.east[0]] = 0.07
     days = start + np.array([5.0, 25.0, 35.0])
-    shift = (model.observe(theta, days, SETUPS["Tern"]) - model.observe(theta, days))[0]
+    still = model.observe(theta, days, SETUPS["Tern"])
+    theta[0, model.wander.east[0]] = 0.07
+    shift = (model.observe(theta, days, SETUPS["Tern"]) - still)[0]
     assert shift[:2] == pytest.approx(np.array([[0.014, 0, 0.014, 0]] * 2))  # 0.07 of a 0.2 mas beam, both knots
     assert shift[2] == pytest.approx(np.zeros(4))
 

@@ -82,10 +82,10 @@ def make_windows() -> Windows:
     months = ("2027-02", "2027-03", "2027-04", "2027-05")
     lost = np.zeros((2, 3, 4, len(LIMITS)))
     lost[0, :2, :, 0] = 430.0
-    lost[0, :2, :, 2] = 170.0
-    lost[0, 0, 2, 1] = 44.5
-    lost[0, :2, :, 4] = 12.25
-    lost[1, 2, :, 2] = 410.0
+    lost[0, :2, :, LIMITS.index("altitude")] = 170.0
+    lost[0, 0, 2, LIMITS.index("shutdown")] = 44.5
+    lost[0, :2, :, LIMITS.index("Moon distance")] = 12.25
+    lost[1, 2, :, LIMITS.index("altitude")] = 410.0
     left = np.zeros((2, 3, 4))
     left[0, :2] = 81.5
     left[1, 2] = 288.0

@@ -184,7 +184,10 @@ def test_a_plan_without_looks_goals_or_windows_still_makes_a_page() -> None:
             "moon_illumination", "sun_separation_deg", "sky_mag_arcsec2",
         )},
         sky_class=none,
-        ledger=replace(windows.ledger, targets=(), lost_hours=np.zeros((0, 3, 4, 5)), left_hours=np.zeros((0, 3, 4))),
+        ledger=replace(
+            windows.ledger, targets=(), lost_hours=np.zeros((0, 3, 4, len(windows.ledger.limits))),
+            left_hours=np.zeros((0, 3, 4)),
+        ),
     )  # fmt: skip
     plan = make_plan(looks=(), goals=(), value=0.0, best_possible=0.0, proof_value=0.0, reasons={}, accounts=())
     text = words_of(page.page_html(make_campaign(), make_forecast(), empty, plan))

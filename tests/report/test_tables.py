@@ -10,7 +10,7 @@ import pytest
 from report_campaign import UNDERSTOOD, Assumed
 from report_records import ARRAY, CAMERA, IMAGER, RING, make_forecast, make_goal, make_look, make_plan, make_windows
 
-from planner.records import Account, State
+from planner.records import Account, Derived, State
 from planner.report import tables
 
 
@@ -133,10 +133,13 @@ def test_warnings_name_their_target_once() -> None:
 
 
 def test_ledger_sums_over_the_season_keep_the_order_of_limits() -> None:
-    """By hand: 4 x 430 h daylight, one shutdown of 44.5 h, 4 x 170 h altitude, 4 x 12.25 h Moon, 4 x 81.5 h left."""
+    """By hand: 4 x 430 h daylight, one shutdown of 44.5 h, 4 x 170 h altitude, 4 x 12.25 h Moon, 4 x 81.5 h left.
+
+    Limits that took nothing have no column.
+    """
     table = tables.windows_season(make_windows())
-    assert table.columns[2:] == ("daylight and twilight", "shutdown", "altitude", "Sun keep-out", "Moon", "left")
-    assert table.rows[0] == ("Reed", CAMERA, "1720", "44", "680", "0", "49", "326")
+    assert table.columns[2:] == ("daylight and twilight", "shutdown", "altitude", "Moon distance", "left")
+    assert table.rows[0] == ("Reed", CAMERA, "1720", "44", "680", "49", "326")
 
 
 def test_ledger_leaves_out_setups_that_were_never_considered_for_a_target() -> None:
@@ -187,3 +190,19 @@ def test_unlimited_and_unknown_numbers_have_words() -> None:
     (row,) = tables.goals_table(plan).rows
     assert row[2] == "unlimited"
     assert row[-1] == "–"
+
+
+def test_derived_quantities_show_dates_as_dates_and_the_share_of_draws_that_have_them():
+    speed = Derived("Heron K1", "apparent_speed_c", "c", np.array([5.0, 6.0, 7.5, 9.0, 10.0]))
+    crossing = Derived("Heron K1", "core_crossing", "MJD", 61000.5 + np.array([-20.0, -10.0, 0.0, 10.0, 20.0]))
+    beta = Derived("Heron K1", "beta", "", np.array([0.90, 0.91, 0.95, 0.97, 0.98]), exists=0.82)
+    made = make_forecast()
+    heron = replace(made.target("Heron"), derived=(speed, crossing, beta))
+    table = tables.forecast_derived(replace(made, targets=(made.target("Reed"), heron)))
+    assert table.rows == (
+        ("Heron K1", "apparent_speed_c", "7.50", "6.00 to 9.00", "c", "100 %"),
+        # MJD 61000 is 2025-11-21 (0h of 2025-01-01 is MJD 60676)
+        ("Heron K1", "core_crossing", "2025-11-21", "2025-11-11 to 2025-12-01", "–", "100 %"),
+        ("Heron K1", "beta", "0.950", "0.910 to 0.970", "–", "82 %"),
+    )
+    assert tables.forecast_derived(made).rows == ()

@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from planner.schedule import orders
+from planner.schedule import nights, orders
 from planner.schedule.nights import (
     Sequencer,
     _by_constraints,
@@ -18,7 +18,7 @@ from planner.schedule.nights import (
     sequence,
     violated_windows,
 )
-from planner.schedule.orders import TooManyOrders, earliest_order
+from planner.schedule.orders import TooManyOrders, earliest_deadline_order, earliest_order
 from planner.schedule.problem import Problem
 
 BASE = 60000.0
@@ -94,9 +94,21 @@ def test_a_search_that_grows_too_large_says_so(monkeypatch: pytest.MonkeyPatch) 
     monkeypatch.setattr(orders, "STATES", 3)
     with pytest.raises(TooManyOrders):
         earliest_order(np.zeros(5), np.full(5, 1000.0), np.full(5, 10.0))
-    starts = sequence(night([(0, 480, 60)] * 5), range(5), comfort=False)
+    # only an order against the deadlines works here, so the night falls to CP-SAT, which finds it
+    looks = [(0.0, 300.0, 100.0), (10.0, 60.0, 50.0), (0.0, 400.0, 60.0), (0.0, 450.0, 60.0), (0.0, 500.0, 60.0)]
+    starts = sequence(night(looks), range(5), comfort=False)
     assert starts is not None
-    _keeps_every_limit(night([(0, 480, 60)] * 5), starts)
+    _keeps_every_limit(night(looks), starts)
+    assert earliest_deadline_order(*(60.0 * np.array(looks)).T) is None
+
+
+def test_a_night_that_nobody_can_decide_is_refused_and_remembered(monkeypatch: pytest.MonkeyPatch) -> None:
+    looks = [(0.0, 300.0, 100.0), (10.0, 60.0, 50.0), (0.0, 400.0, 60.0)]
+    monkeypatch.setattr(orders, "STATES", 0)
+    monkeypatch.setattr(nights, "_SURE_EFFORT", 0.0)
+    sequencer = Sequencer(night(looks))
+    assert sequencer.fit(range(3)).failing == ((0, 1, 2),)
+    assert sequencer.undecided
 
 
 @given(st.lists(look, min_size=2, max_size=5))

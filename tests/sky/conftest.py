@@ -17,6 +17,7 @@ from planner.campaign.records import (
     SetupRef,
     Site,
     Source,
+    SpacecraftSite,
     Target,
 )
 
@@ -111,6 +112,8 @@ def _setup(name: str, sites: Mapping[str, AnySite]) -> SetupRef:
     place = sites[slug]
     if isinstance(place, ArraySite):
         return SetupRef(name, slug, place, slug, receiver=place.receivers[part], receiver_name=part)
+    if isinstance(place, SpacecraftSite):
+        return SetupRef(name, slug, place, slug, camera=place.setups[part])
     for telescope, record in place.telescopes.items():
         if part in record.setups:
             return SetupRef(
@@ -120,6 +123,8 @@ def _setup(name: str, sites: Mapping[str, AnySite]) -> SetupRef:
                 f"{slug}/{telescope}",
                 camera=record.setups[part],
                 shutdowns=record.shutdowns,
+                busy=record.busy,
+                mounted=record.mounted.get(part),
             )
     raise KeyError(name)
 

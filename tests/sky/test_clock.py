@@ -186,3 +186,25 @@ def test_importing_the_room_loads_no_heavy_library() -> None:
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True, cwd=".")
     assert done.stdout.strip() == "[]"
+
+
+def test_a_pinned_table_refuses_dates_past_its_end_and_the_kernel_goes_on() -> None:
+    """astropy with a pinned table and strict accuracy raises; the kernel holds UT1-UTC, and agrees before the end."""
+    with clock.offline_astropy():
+        from astropy.time import Time
+        from astropy.utils import iers
+
+        table = iers.IERS_A.open(iers.IERS_A_FILE)
+        last = float(table["MJD"][-1].to_value("d"))
+        with (
+            iers.earth_orientation_table.set(table),
+            iers.conf.set_temp("iers_degraded_accuracy", "error"),
+        ):
+            with pytest.raises(iers.IERSRangeError, match="outside of range covered by IERS table"):
+                _ = Time(last + 60.0, format="mjd").ut1
+            inside = float(Time(last - 60.0, format="mjd").delta_ut1_utc)
+    assert float(clock.ut1_minus_utc(last - 60.0)) == pytest.approx(inside, abs=2e-4)  # daily tides are left out
+    assert float(clock.ut1_minus_utc(last + 60.0)) == float(clock.ut1_minus_utc(clock.earth_orientation().last_mjd))
+    text = clock.beyond_tables(last + 60.0)
+    assert text is not None
+    assert "the earth-orientation table ends on" in text

@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -100,13 +100,17 @@ def _forecast(campaign: Campaign, ready: Prepared, progress: Progress) -> Foreca
     from concurrent.futures import ThreadPoolExecutor
 
     from planner.prediction.curves import target_forecast
+    from planner.prediction.spacings import spacing_answers
     from planner.schedule.slots import setup_targets
 
     nights = night_middles(campaign)
 
     def one(target: Target) -> TargetForecast:
         setups = setup_targets(campaign, target)
-        return target_forecast(ready.models[target.name], ready.beliefs[target.name], nights, setups, ready.tracks)
+        model, belief = ready.models[target.name], ready.beliefs[target.name]
+        made = target_forecast(model, belief, nights, setups, ready.tracks)
+        spacings = spacing_answers(model, belief.draws, nights, setups, ready.tracks)
+        return replace(made, spacings=tuple(spacings))
 
     progress("forecast", 0.0)
     found: list[TargetForecast] = []
@@ -296,7 +300,6 @@ def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understa
     from planner.campaign.in_words import facts_of
     from planner.instruments.calibration import calibrations
     from planner.prediction.first_answer import answers_of, ties_of
-    from planner.prediction.jet_answers import jet_answers
     from planner.schedule.slots import setup_targets
 
     answers: list[tuple[str, str, str]] = []
@@ -307,9 +310,7 @@ def _understood(campaign: Campaign, ready: Prepared, made: Forecast) -> Understa
         one = made.target(target.name)
         model, refs = ready.models[target.name], setup_targets(campaign, target)
         answers += [(target.name, feature, text) for feature, text in answers_of(one, made)]
-        draws = ready.beliefs[target.name].draws
-        told = jet_answers(model, draws, nights, refs, ready.tracks)
-        answers += [(target.name, feature, text) for feature, text in told]
+        answers += [(target.name, feature, text) for feature, text in one.spacings]
         ties += [(target.name, text) for text in ties_of(model, nights, [s.name for s in refs])]
         warnings += list(one.warnings)
     return Understanding(

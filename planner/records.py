@@ -133,6 +133,7 @@ class TargetForecast:
     measurable: tuple[Measurable, ...]
     warnings: tuple[str, ...]  # model assumptions that fail, each with its number
     derived: tuple[Derived, ...] = ()
+    spacings: tuple[tuple[str, str], ...] = ()  # (feature, what is known of the time between its epochs)
 
 
 @dataclass(frozen=True)

@@ -23,9 +23,9 @@ def forecast(folder: Folder, figures: Figures = None) -> None:
     console = screen()
     show(console, tables.forecast_values(found))
     show(console, tables.forecast_measurable(found))
-    derived = tables.forecast_derived(found)
-    if derived.rows:
-        show(console, derived)
+    for table in (tables.forecast_derived(found), tables.forecast_spacings(found)):
+        if table.rows:
+            show(console, table)
     bullets(console, "Where the model is strained", tables.forecast_warnings(found))
     if figures is not None:
         from planner.report.gallery import write_figures

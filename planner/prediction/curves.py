@@ -11,18 +11,20 @@ from planner.prediction.arclets import ArcletModel
 from planner.prediction.conditions import CameraSky, conditions, fwhm_arcsec
 from planner.prediction.derived import derived_of
 from planner.prediction.in_time import over_nights
-from planner.prediction.look import LookErrors, look_errors
+from planner.prediction.look import look_errors
 from planner.prediction.look_rings import apart_days, echo_view, source_mag
 from planner.prediction.model import FeatureModel, TargetModel
+from planner.prediction.nightly import every_night, judged_nights
 from planner.prediction.once import remember, remembering
 from planner.prediction.ring_shapes import FilledShape
 from planner.prediction.ring_warnings import arclet_warnings, ring_warnings
 from planner.prediction.rings import RingModel, RingState
-from planner.records import BAND_SHARES, Band, Belief, Bools, Floats, Measurable, TargetForecast, Track
-from planner.units import date_of_mjd
+from planner.records import BAND_SHARES, Band, Belief, Bools, Floats, Ints, Measurable, TargetForecast, Track
+from planner.units import date_of_mjd, mjd_of_date
 
 SPREAD_SHARES = (0.16, 0.50, 0.84)
 FEW = 64  # draws for a median that only a figure shows
+FIGURE_NIGHTS = 10  # nights between the points of such a line
 SHARP_ARCSEC = 1.0  # image FWHM taken for the separation time where a target has no camera
 
 
@@ -105,17 +107,14 @@ def _forecast(
         track = tracks.get((model.target.name, setup.name))
         if setup.is_array and (track is None or track.hours_up <= 0):
             continue
-        sky = seconds = None
-        if not setup.is_array:
-            assert setup.camera is not None
-            sky = reference_sky(model.target, setup, len(nights_mjd), nights_mjd)
-            seconds = np.full(len(nights_mjd), setup.camera.longest_look_min * 60.0)
-        errors = look_errors(model, theta, nights_mjd, setup, sky=sky, seconds=seconds, track=track, with_sigma=False)
+        ok, reasons = measurable_nights(model, theta, nights_mjd, setup, track)
         for i, feature in enumerate(model.features):
             if isinstance(feature, RingModel | ArcletModel) == setup.is_array:
                 continue  # cameras measure rings, arrays measure knots
-            span = _span(model, feature, few, nights_mjd, setup, sky, track)
-            measurable.append(_measurable(feature.name, setup.name, nights_mjd, errors, i, span))
+            span = _span_of_figure(model, feature, few, nights_mjd, setup, track)
+            measurable.append(
+                _measurable(feature.name, setup.name, nights_mjd, ok[:, :, i], reasons.get(feature.name, ""), span)
+            )
     return TargetForecast(
         model.target.name,
         tuple(bands),
@@ -138,6 +137,22 @@ def share_state(ring: RingModel, theta: Floats, mjd: Floats) -> None:
     remember(RingModel.state, ring, theta, mjd, RingState(np.isfinite(mean), radius, mean, width, mag))
     remember(RingModel.width_then, ring, theta, mjd, width)
     remember(RingModel.growth_arcsec_day, ring, theta, mjd, growth)
+
+
+def share_part(
+    ring: RingModel, whole: tuple[Floats, Floats], at: tuple[Ints, Ints], part: tuple[Floats, Floats]
+) -> None:
+    """Hand some draws and nights (``at``) of a ring's known state on to the steps that work on that ``part``."""
+    cut = np.ix_(*at)
+    state = ring.state(*whole)
+    taken = RingState(
+        exists=state.exists[cut], radius_arcsec=state.radius_arcsec[cut],
+        mean_radius_arcsec=state.mean_radius_arcsec[cut], width_arcsec=state.width_arcsec[cut],
+        mag_arcsec2=state.mag_arcsec2[cut],
+    )  # fmt: skip
+    remember(RingModel.state, ring, *part, taken)
+    remember(RingModel.width_then, ring, *part, ring.width_then(*whole)[cut])
+    remember(RingModel.growth_arcsec_day, ring, *part, ring.growth_arcsec_day(*whole)[cut])
 
 
 def feature_bands(feature: FeatureModel, theta: Floats, mjd: Floats, fwhm: float = SHARP_ARCSEC) -> list[Band]:
@@ -176,24 +191,58 @@ def _ring_rows(ring: RingModel, theta: Floats, mjd: Floats, fwhm: float) -> list
     return [(name, unit, np.where(state.exists, values, np.nan)) for name, unit, values in rows]
 
 
+def measurable_nights(
+    model: TargetModel, theta: Floats, nights_mjd: Floats, setup: SetupRef, track: Track | None
+) -> tuple[Bools, dict[str, str]]:
+    """What is measurable in each draw and night, (B, T, F), and what most often stops each feature that is stopped."""
+    reasons: dict[str, dict[str, float]] = {}
+
+    def judge(draws: Ints, nights: Ints) -> Bools:
+        some, mjd = locked(theta[draws]), locked(nights_mjd[nights])
+        sky = seconds = None
+        if setup.camera is not None:
+            for feature in model.features:
+                if isinstance(feature, RingModel):
+                    share_part(feature, (theta, nights_mjd), (draws, nights), (some, mjd))
+            sky = reference_sky(model.target, setup, len(mjd), mjd)
+            seconds = np.full(len(mjd), setup.camera.longest_look_min * 60.0)
+        errors = look_errors(model, some, mjd, setup, sky=sky, seconds=seconds, track=track, with_sigma=False)
+        if not reasons:  # the first call sees all draws
+            for block in errors.blocked:
+                reasons.setdefault(block.feature, {})[block.reason] = float(block.mask.mean())
+        return errors.measurable
+
+    jumps = [mjd_of_date(t.on) + 1.0 for f in model.features for t in getattr(f.record, "templates", ())]
+    ok = every_night(judge, len(theta), judged_nights(nights_mjd, jumps), len(nights_mjd))
+    worst = {}
+    for i, feature in enumerate(model.features):
+        shares = reasons.get(feature.name, {})
+        top = max(shares, key=lambda reason: shares[reason], default="")
+        worst[feature.name] = top if top and shares[top] > 0 and not ok[:, :, i].all() else ""
+    return ok, worst
+
+
 def _measurable(
-    feature: str, setup: str, mjd: Floats, errors: LookErrors, i: int, span: tuple[Floats, Floats]
+    feature: str, setup: str, mjd: Floats, ok: Bools, reason: str, span: tuple[Floats, Floats]
 ) -> Measurable:
-    ok = errors.measurable[:, :, i]
     some = ok.any(axis=1)
     first = np.where(some, mjd[np.argmax(ok, axis=1)], np.nan)
     last = np.where(some, mjd[len(mjd) - 1 - np.argmax(ok[:, ::-1], axis=1)], np.nan)
     return Measurable(
         feature, setup, ok.mean(axis=0),
         quantiles(first[:, None], SPREAD_SHARES)[0][:, 0], quantiles(last[:, None], SPREAD_SHARES)[0][:, 0],
-        float(1.0 - some.mean()), _main_reason(feature, errors, ok), span,
+        float(1.0 - some.mean()), reason, span,
     )  # fmt: skip
 
 
-def _main_reason(feature: str, errors: LookErrors, ok: Bools) -> str:
-    shares = {b.reason: float(b.mask.mean()) for b in errors.blocked if b.feature == feature}
-    worst = max(shares, key=lambda reason: shares[reason], default="")
-    return worst if worst and shares[worst] > 0 and not ok.all() else ""
+def _span_of_figure(
+    model: TargetModel, feature: FeatureModel, few: Floats, mjd: Floats, setup: SetupRef, track: Track | None
+) -> tuple[Floats, Floats]:
+    """``_span`` on every night from a few: it is a smooth line of a figure."""
+    at = np.unique(np.append(np.arange(0, len(mjd), FIGURE_NIGHTS), len(mjd) - 1))
+    sky = None if setup.is_array else reference_sky(model.target, setup, len(at), mjd[at])
+    low, high = _span(model, feature, few, mjd[at], setup, sky, track)
+    return np.interp(mjd, mjd[at], low), np.interp(mjd, mjd[at], high)
 
 
 def _span(

@@ -21,7 +21,7 @@ from planner.prediction.look_rings import CameraSky, arclet_errors, ring_errors
 from planner.prediction.model import TargetModel
 from planner.prediction.rings import RingModel
 from planner.records import Bools, Floats, Track
-from planner.units import date_of_mjd
+from planner.units import YEAR_DAYS, date_of_mjd
 
 
 @dataclass(frozen=True)
@@ -108,7 +108,15 @@ def array_errors(
     beam_axes = np.array([[np.sin(pa), np.cos(pa)], [np.cos(pa), -np.sin(pa)]])  # major, minor, on (east, north)
     spots = {
         feature.name: [
-            see_spot(feature.name, label, state, feature.record.size_mas, feature.record.grows, view)
+            see_spot(
+                feature.name,
+                label,
+                state,
+                feature.record.size_mas,
+                feature.record.grows,
+                view,
+                moved_mas(feature, theta, track),
+            )
             for label, state in zip(feature.spots, feature.spot_states(theta, mjd, receiver.ghz, setup), strict=True)
         ]
         for feature in model.features
@@ -138,6 +146,13 @@ def array_errors(
         np.asarray(block_diag(*axes)), np.concatenate(sigma, axis=-1), np.stack(measurable, -1), np.stack(snr, -1),
         tuple(blocked),
     )  # fmt: skip
+
+
+def moved_mas(feature: KnotModel | PairModel, theta: Floats, track: Track) -> Floats | float:
+    """How far a knot moves within one look, (B, 1); a pair's approaching knot stands for both. 0 if it stands still."""
+    if feature.stationary:
+        return 0.0
+    return np.asarray(feature.speed_mas_yr(theta))[:, None] / YEAR_DAYS * (track.look_hours / 24.0)
 
 
 def look_errors(

@@ -56,15 +56,29 @@ class Spot:
     snr: Floats  # of the peak; 0 where it does not exist
 
 
-def see_spot(feature: str, label: str, state: SpotState, size_mas: float, grows: float, view: View) -> Spot:
-    """Blur one knot and find its S/N and its separation in beams."""
+def see_spot(
+    feature: str,
+    label: str,
+    state: SpotState,
+    size_mas: float,
+    grows: float,
+    view: View,
+    moved_mas: Floats | float = 0.0,
+) -> Spot:
+    """Blur one knot and find its S/N and its separation in beams.
+
+    ``moved_mas``: how far it moves within the look, (B, 1): the image is drawn out by that, its peak falls by
+    b / hypot(b, moved) with b the mean beam, and its centre is known as that of a knot so much longer.
+    """
     own = size_mas + grows * np.nan_to_num(state.separation_mas) if grows else np.full((), size_mas)
     size2 = own * own + view.scatter_mas**2
     beam2 = view.track.beam_major_mas * view.track.beam_minor_mas
     # a knot larger than the beam spreads its flux over several beams: its peak is what counts
-    snr = np.where(state.exists, state.light_mjy / (view.noise_mjy * (1.0 + size2 / beam2)), 0.0)
+    drawn2 = np.asarray(moved_mas) ** 2
+    spread = (1.0 + size2 / beam2) * np.sqrt(1.0 + drawn2 / beam2)
+    snr = np.where(state.exists, state.light_mjy / (view.noise_mjy * spread), 0.0)
     name = f"{feature} ({label})" if label else feature
-    return Spot(feature, name, state, np.sqrt(size2), view.beams(state.offset_mas), snr)
+    return Spot(feature, name, state, np.sqrt(size2 + drawn2), view.beams(state.offset_mas), snr)
 
 
 def beams_between(one: Spot, other: Spot, view: View) -> Floats:

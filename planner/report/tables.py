@@ -220,6 +220,12 @@ def forecast_values(forecast: Forecast) -> TextTable:
     return TextTable("Forecast: median (16 to 84 %)", columns, rows, numbers, note, whole)
 
 
+def forecast_spacings(forecast: Forecast) -> TextTable:
+    """Time between epochs: enough to see motion, and not so long that a knot is taken for another."""
+    rows = tuple((feature_name(t.target, f), plain(text)) for t in forecast.targets for f, text in t.spacings)
+    return TextTable("Time between epochs", ("feature", "useful and safe"), rows)
+
+
 def forecast_derived(forecast: Forecast) -> TextTable:
     """What is believed of every quantity that follows from the parameters."""
 

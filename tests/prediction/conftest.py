@@ -16,6 +16,7 @@ from planner.records import Track
 
 sys.path.insert(0, str(Path(__file__).parent))  # the invented jets lie beside the tests of this room
 
+LOOK_HOURS = {"cairn-array/43ghz": 3.0, "cairn-array/22ghz": 1.0}
 BEAMS_MAS = {"cairn-array/43ghz": 0.2, "cairn-array/22ghz": 0.4}
 
 JetModels = Callable[..., TargetModel]
@@ -23,7 +24,10 @@ JetModels = Callable[..., TargetModel]
 
 @pytest.fixture(scope="session")
 def tracks() -> Mapping[str, Track]:
-    return {name: Track(6.0, 3.0, 0.0, 8, beam * 1.5, beam / 1.5, -5.0, 0.0006) for name, beam in BEAMS_MAS.items()}
+    return {
+        name: Track(6.0, LOOK_HOURS[name], 0.0, 8, beam * 1.5, beam / 1.5, -5.0, 0.0006)
+        for name, beam in BEAMS_MAS.items()
+    }
 
 
 @pytest.fixture(scope="session")

@@ -173,7 +173,7 @@ def test_a_plan_for_a_shape_passes_its_recount_and_never_beats_its_bound(tmp_pat
     if shape == "filled":
         assert {look.slot.setup for look in plan.looks} == {"hill/polar"}
     understood = flow.understood(campaign)
-    assert len(understood.answers) == 1
+    assert len(understood.answers) >= 1
 
 
 def test_all_shapes_share_one_target_and_one_look(tmp_path: Path) -> None:

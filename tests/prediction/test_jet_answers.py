@@ -79,7 +79,7 @@ def test_a_knot_that_smears_within_a_look_is_told_with_the_longest_look(
     texts = told(demo_campaign, model, {HIGH: wide})
     (smear,) = [text for text in texts if "smears" in text]
     assert smear.startswith(f"{HIGH}: it moves 4.1 mas, 4.8 beams, within a look of 3 h")
-    assert smear.endswith("or look for less than 0.31 h")
+    assert "look for less than 0.31 h" in smear
     early = {**APPARENT, "core_crossing": {"date": "2025-06-10", "sigma_days": 20, "at_ghz": 43}}
     assert not any("smears" in text for text in told(demo_campaign, jet_model(knot("A", early)), tracks))
 

@@ -13,7 +13,7 @@ from invented_jets import APPARENT, CROSSING, FLUX, knot
 
 from planner.campaign.records import Campaign, Scattering
 from planner.instruments import interferometer
-from planner.prediction.knots import KnotModel
+from planner.prediction.knots import KnotModel, PairModel
 from planner.prediction.look import LookErrors, look_errors
 from planner.prediction.look_knots import scattered_mas
 from planner.prediction.model import TargetModel
@@ -206,3 +206,20 @@ def test_scattering_widens_the_beam_and_the_knot(
     beam2 = track.beam_major_mas * track.beam_minor_mas
     assert found.snr[0] / before.snr[0] == pytest.approx(np.full((4, 1), 1 / (1 + cut**2 / beam2)), rel=1e-9)
     assert found.sigma[0, -1, 0] > before.sigma[0, -1, 0]
+
+
+def test_motion_within_a_look_lowers_the_peak_and_widens_the_knot(
+    demo_campaign: Campaign, models: Mapping[str, TargetModel]
+) -> None:
+    """Drawn out by L, a knot's peak falls by b / hypot(b, L), b the mean beam (closed form); a still one keeps it."""
+    model, ref = models["Vetch"], demo_campaign.setup("cairn-array/22ghz")
+    theta = model.belief(8, 5, "test").draws
+    pair = model.features[0]
+    assert isinstance(pair, PairModel)
+    mjd = np.array([mjd_of_date("2027-01-05")])
+    snr = {}
+    for hours in (0.0, 1.0):
+        track = Track(6.0, hours, 0.0, 8, 0.6, 0.6, 0.0, 1e-4)
+        snr[hours] = look_errors(model, theta, mjd, ref, track=track).snr[:, 0, 0]
+    moved = pair.speed_mas_yr(theta) / YEAR_DAYS / 24.0
+    assert snr[1.0] == pytest.approx(snr[0.0] * 0.6 / np.hypot(0.6, moved), rel=1e-9)

@@ -286,6 +286,7 @@ def draw_calendar(
 MAIN_IN, SIDE_IN, CHANCE_IN = 2.9, 1.5, 1.0  # heights of the panels, inch
 WIDTH_IN = 9.0
 MOST_BANDS = 4  # observables drawn for one feature; the table lists all
+IN_TABLES_ONLY = ("whole-ring brightness", "separation time")  # follow the others; a panel each would crowd them
 
 
 def _new_figure(height_in: float) -> Any:
@@ -299,7 +300,8 @@ def feature_figure(
     forecast: Forecast, target: str, feature: str, looks: Iterable[Look] = (), *, styles: dict[str, Style]
 ) -> Any:
     """Figure of one feature: its observables above one another, and the chance of being measurable below."""
-    bands = series.bands_of(forecast, target, feature)[:MOST_BANDS]
+    every = series.bands_of(forecast, target, feature)
+    bands = [band for band in every if band.observable not in IN_TABLES_ONLY][:MOST_BANDS] or every[:1]
     measurable = series.measurable_of(forecast, target, feature)
     mine = tuple(k for k in looks if k.slot.target == target)
     heights = [MAIN_IN, *([SIDE_IN] * (len(bands) - 1)), *([CHANCE_IN] if measurable else [])]

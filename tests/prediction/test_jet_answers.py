@@ -46,7 +46,7 @@ def test_the_spacing_of_epochs_is_two_sigma_of_motion_to_half_a_knot_spacing(
     least, most = jet_paths.useful_spacing_days(
         sigma, 0.25, np.median(model.features[0].speed_mas_yr(theta)) / YEAR_DAYS
     )  # type: ignore[union-attr]
-    assert f"in {least:.0f} d, the least useful spacing of epochs" in text
+    assert f"in {least:.0f} d, the least useful spacing" in text
     assert f"beyond {most:.0f} d it can be taken for its neighbour 0.25 mas away" in text
     assert most == pytest.approx(0.25 / 2 / 0.3 * YEAR_DAYS, rel=1e-3)
 

@@ -14,7 +14,7 @@ from planner.prediction.in_time import over_nights
 from planner.prediction.look import look_errors
 from planner.prediction.look_rings import apart_days, echo_view, source_mag
 from planner.prediction.model import FeatureModel, TargetModel
-from planner.prediction.nightly import every_night, judged_nights
+from planner.prediction.nightly import every_night, judged_nights, new_months
 from planner.prediction.once import remember, remembering
 from planner.prediction.ring_shapes import FilledShape
 from planner.prediction.ring_warnings import arclet_warnings, ring_warnings
@@ -23,8 +23,8 @@ from planner.records import BAND_SHARES, Band, Belief, Bools, Floats, Ints, Meas
 from planner.units import date_of_mjd, mjd_of_date
 
 SPREAD_SHARES = (0.16, 0.50, 0.84)
-FEW = 64  # draws for a median that only a figure shows
-FIGURE_NIGHTS = 10  # nights between the points of such a line
+FEW = 32  # draws for a median that only a figure shows
+FIGURE_NIGHTS = 15  # nights between the points of such a line
 SHARP_ARCSEC = 1.0  # image FWHM taken for the separation time where a target has no camera
 
 
@@ -212,14 +212,26 @@ def measurable_nights(
                 reasons.setdefault(block.feature, {})[block.reason] = float(block.mask.mean())
         return errors.measurable
 
-    jumps = [mjd_of_date(t.on) + 1.0 for f in model.features for t in getattr(f.record, "templates", ())]
-    ok = every_night(judge, len(theta), judged_nights(nights_mjd, jumps), len(nights_mjd))
+    jumps = _jumps(model, nights_mjd, setup, track)
+    ok = every_night(judge, len(theta), judged_nights(len(nights_mjd), jumps), len(nights_mjd))
     worst = {}
     for i, feature in enumerate(model.features):
         shares = reasons.get(feature.name, {})
         top = max(shares, key=lambda reason: shares[reason], default="")
         worst[feature.name] = top if top and shares[top] > 0 and not ok[:, :, i].all() else ""
     return ok, worst
+
+
+def _jumps(model: TargetModel, nights_mjd: Floats, setup: SetupRef, track: Track | None) -> list[int]:
+    """Nights at which what a look measures may jump: months of other seeing, cloud or opacity, and templates."""
+    templates = [mjd_of_date(t.on) + 1.0 for f in model.features for t in getattr(f.record, "templates", ())]
+    found = [int(i) for i in np.searchsorted(nights_mjd, templates)]
+    if setup.camera is None:
+        return found + (new_months(nights_mjd).tolist() if track is not None and track.noise_by_month_jy else [])
+    sky = reference_sky(model.target, setup, len(nights_mjd), nights_mjd)
+    for values in (sky.fwhm_arcsec, np.broadcast_to(sky.extinction_mag, nights_mjd.shape)):
+        found += (np.flatnonzero(np.diff(values)) + 1).tolist()
+    return found
 
 
 def _measurable(

@@ -69,7 +69,7 @@ def over_nights(
 def read_off(values: Floats, weights: Floats) -> Floats:
     """Values (N, K...) at the points turned into values (N, T) elsewhere.
 
-    Plain loops: for twelve points the threads of a matrix library cost more than they save, and they would change the
+    Plain loops: for so few points the threads of a matrix library cost more than they save, and they would change the
     order of the sums from machine to machine.
     """
     return np.einsum("nk,kt->nt", values[:, :POINTS], weights, optimize=False)

@@ -18,16 +18,17 @@ from planner.units import date_of_mjd
 STRIDE = 12  # nights between judged ones: tests/prediction compares with every night judged
 
 
-def judged_nights(nights_mjd: Floats, jumps_mjd: Iterable[float] = ()) -> Ints:
-    """Night numbers to judge: every ``STRIDE``-th, the last, both sides of each new month, and nights of jumps."""
-    count = len(nights_mjd)
+def judged_nights(nights: int, jumps: Iterable[int] = ()) -> Ints:
+    """Night numbers to judge: every ``STRIDE``-th, the last, and both sides of each night at which conditions jump."""
+    chosen = {*range(0, nights, STRIDE), nights - 1}
+    chosen |= {i for jump in jumps for i in (jump - 1, jump, jump + 1)}
+    return np.array(sorted(i for i in chosen if 0 <= i < nights), dtype=np.int64)
+
+
+def new_months(nights_mjd: Floats) -> Ints:
+    """Numbers of the nights that are the first of a month."""
     months = np.array([date_of_mjd(mjd - 1.0).month for mjd in nights_mjd])
-    turn = np.flatnonzero(np.diff(months)) if count else np.zeros(0, dtype=np.int64)
-    chosen = [np.arange(0, count, STRIDE), [count - 1] if count else [], turn, turn + 1]
-    for jump in jumps_mjd:
-        at = int(np.searchsorted(nights_mjd, jump))
-        chosen.append([i for i in (at - 1, at, at + 1) if 0 <= i < count])
-    return np.unique(np.concatenate([np.asarray(part, dtype=np.int64) for part in chosen]))
+    return np.flatnonzero(np.diff(months)) + 1
 
 
 def every_night(judge: Callable[[Ints, Ints], Bools], draws: int, judged: Ints, nights: int) -> Bools:

@@ -7,6 +7,7 @@ Sun takes a target away for longer than the safe gap, that is said too.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from functools import lru_cache
 
 import numpy as np
 
@@ -92,16 +93,24 @@ def sun_gaps(
 
 def longest_near_sun(target: Target, limit_deg: float, from_mjd: float) -> tuple[float, int]:
     """First day and length in days of the longest run, in a year from ``from_mjd``, nearer the Sun than the limit."""
-    from planner.sky.sun_moon import vectors_km
-
     days = from_mjd + np.arange(366.0)
     ra, dec = np.radians([target.position.ra_deg, target.position.dec_deg])
     place = np.array([np.cos(dec) * np.cos(ra), np.cos(dec) * np.sin(ra), np.sin(dec)])
-    sun = vectors_km("sun", days)
-    near = sun @ place / np.linalg.norm(sun, axis=1) > np.cos(np.radians(limit_deg))
+    near = _sun_of_a_year(from_mjd) @ place > np.cos(np.radians(limit_deg))
     edges = np.flatnonzero(np.diff(np.concatenate([[0], near.astype(np.int8), [0]])))
     starts, ends = edges[::2], edges[1::2]
     if not len(starts):
         return from_mjd, 0
     k = int(np.argmax(ends - starts))
     return float(days[starts[k]]), int(ends[k] - starts[k])
+
+
+@lru_cache(maxsize=8)  # every target of a campaign asks for the same year
+def _sun_of_a_year(from_mjd: float) -> Floats:
+    """Unit vectors to the Sun on 366 days, (366, 3)."""
+    from planner.sky.sun_moon import vectors_km
+
+    sun = vectors_km("sun", from_mjd + np.arange(366.0))
+    unit = sun / np.linalg.norm(sun, axis=1, keepdims=True)
+    unit.setflags(write=False)
+    return np.asarray(unit)

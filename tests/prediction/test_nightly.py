@@ -14,7 +14,7 @@ from planner.campaign.records import Campaign
 from planner.prediction.curves import measurable_nights, reference_sky
 from planner.prediction.look import look_errors
 from planner.prediction.model import TargetModel
-from planner.prediction.nightly import STRIDE, every_night, judged_nights
+from planner.prediction.nightly import STRIDE, every_night, judged_nights, new_months
 from planner.records import Track
 from planner.units import mjd_of_date
 
@@ -29,17 +29,16 @@ def test_any_stretch_longer_than_the_stride_is_found_to_the_night(stretches: lis
         truth[b, low : high + 1] = True
     long = [(t.sum() >= STRIDE or not t.any()) for t in truth]
     truth = truth[np.array(long)]
-    nights = mjd_of_date("2027-01-04") + 1.0 + np.arange(100.0)
-    found = every_night(lambda b, t: truth[np.ix_(b, t)], len(truth), judged_nights(nights), 100)
+    found = every_night(lambda b, t: truth[np.ix_(b, t)], len(truth), judged_nights(100), 100)
     assert np.array_equal(found, truth)
 
 
-def test_nights_on_both_sides_of_a_month_and_of_a_jump_are_judged() -> None:
+def test_nights_on_both_sides_of_a_jump_are_judged() -> None:
     nights = mjd_of_date("2027-01-04") + 1.0 + np.arange(60.0)
-    judged = set(judged_nights(nights, [nights[20] + 0.3]).tolist())
-    assert {27, 28} <= judged  # 2027-01-31 and 2027-02-01
-    assert {20, 21, 22} <= judged
-    assert {0, 59} <= judged
+    assert new_months(nights).tolist() == [28, 56]  # the nights of 2027-02-01 and 2027-03-01
+    judged = set(judged_nights(60, [28, 0, 59]).tolist())
+    assert {0, 1, 27, 28, 29, 58, 59} <= judged
+    assert max(judged) == 59
 
 
 @pytest.mark.parametrize("name", ["Sallow", "Brindle", "Tern", "Vetch"])

@@ -4,9 +4,8 @@ LightlagError
 ├── InputError          a file says something that cannot be used (place, field, value, what is allowed)
 │   └── UnknownName     a name that is not there; carries the nearest spelling
 ├── DomainError         a number outside the domain of a formula (argument, value, limit)
-├── PlanningError       the solver or its inputs cannot give a plan
-│   └── RecountError    a finished plan failed its independent recount; it is never shown as a plan
-└── TooLarge            the work asked for would not fit; carries the estimated size
+└── PlanningError       the solver or its inputs cannot give a plan
+    └── RecountError    a finished plan failed its independent recount; it is never shown as a plan
 """
 
 from __future__ import annotations
@@ -96,10 +95,6 @@ class RecountError(PlanningError):
     def __init__(self, breaches: Iterable[str]) -> None:
         self.breaches = tuple(breaches)
         super().__init__("the plan fails its recount: " + "; ".join(self.breaches))
-
-
-class TooLarge(LightlagError):
-    """The work asked for would not fit in memory or time."""
 
 
 def nearest(name: str, permitted: Iterable[str]) -> str | None:

@@ -23,7 +23,7 @@ from planner.campaign.records import (
 )
 from planner.errors import InputError
 from planner.physics import jet
-from planner.prediction.coordinates import Block, Layout, Number, standard
+from planner.prediction.coordinates import JointPrior, Layout, Number, standard
 from planner.prediction.core import Core, Wander, build_core, build_wander
 from planner.prediction.knots import JetModel, KnotModel, PairModel, opposite
 from planner.prediction.light import Light, build_ln_flux
@@ -176,7 +176,9 @@ class JetBuilder:
     def _velocity(self, name: str, speed: Law, pa_deg: Law) -> tuple[int, int]:
         names = (f"{name}/speed_east", f"{name}/speed_north")
         laws = (speed, pa_deg)
-        east, north = self.layout.add(Block(names, ("mas/yr", "mas/yr"), laws, _components, nuisance=False, why=_FILE))
+        east, north = self.layout.add(
+            JointPrior(names, ("mas/yr", "mas/yr"), laws, _components, nuisance=False, why=_FILE)
+        )
         return east, north
 
     def _rapidity(self, name: str, given: Intrinsic | Nozzle) -> Number:
@@ -186,7 +188,7 @@ class JetBuilder:
         if isinstance(law, Fixed):
             return Number(None, False, float(turn(law.value)))
         word = "beta" if lorentz is None else "lorentz_factor"
-        block = Block((f"{name}/rapidity",), ("",), (law,), turn, nuisance=False, why=f"{word} in {_FILE}")
+        block = JointPrior((f"{name}/rapidity",), ("",), (law,), turn, nuisance=False, why=f"{word} in {_FILE}")
         return Number(self.layout.add(block)[0], False, float("nan"))
 
     def _clock(self, name: str, sigma_days: float) -> Number:

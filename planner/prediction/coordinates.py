@@ -20,7 +20,7 @@ _SIDE = 96  # the same per axis for two laws at once
 
 
 @dataclass(frozen=True)
-class Block:
+class JointPrior:
     """Coordinates with a joint prior: ``turn`` maps law values (..., L) to coordinates (..., C)."""
 
     names: tuple[str, ...]  # C
@@ -40,14 +40,14 @@ class Block:
         return coordinates.mean(axis=0), np.atleast_2d(np.cov(coordinates, rowvar=False, bias=True))
 
 
-def single(name: str, unit: str, law: Law, *, nuisance: bool, why: str) -> Block:
+def single(name: str, unit: str, law: Law, *, nuisance: bool, why: str) -> JointPrior:
     """Return the block of one law: a law of positive numbers is sampled by its logarithm."""
     if law.positive:
-        return Block((f"ln {name}",), (f"ln({unit})" if unit else "",), (law,), np.log, nuisance, why)
-    return Block((name,), (unit,), (law,), _same, nuisance, why)
+        return JointPrior((f"ln {name}",), (f"ln({unit})" if unit else "",), (law,), np.log, nuisance, why)
+    return JointPrior((name,), (unit,), (law,), _same, nuisance, why)
 
 
-def standard(name: str, unit: str, sigma: float, *, mean: float = 0.0, why: str, nuisance: bool = True) -> Block:
+def standard(name: str, unit: str, sigma: float, *, mean: float = 0.0, why: str, nuisance: bool = True) -> JointPrior:
     """Return a normal nuisance of a stated width."""
     return single(name, unit, Normal(mean=mean, sigma=sigma), nuisance=nuisance, why=why)
 
@@ -63,10 +63,10 @@ class Layout:
     """
 
     def __init__(self) -> None:
-        self.blocks: list[Block] = []
+        self.blocks: list[JointPrior] = []
         self.size = 0
 
-    def add(self, block: Block) -> tuple[int, ...]:
+    def add(self, block: JointPrior) -> tuple[int, ...]:
         """Add a block and return the indices of its coordinates."""
         first = self.size
         self.blocks.append(block)
@@ -99,7 +99,7 @@ class Number:
         return np.exp(coordinate) if self.log else coordinate
 
 
-def parameters(blocks: Sequence[Block]) -> tuple[Parameter, ...]:
+def parameters(blocks: Sequence[JointPrior]) -> tuple[Parameter, ...]:
     """Return the description of every coordinate with its prior width."""
     found = []
     for block in blocks:
@@ -109,14 +109,14 @@ def parameters(blocks: Sequence[Block]) -> tuple[Parameter, ...]:
     return tuple(found)
 
 
-def prior_covariance(blocks: Sequence[Block]) -> Floats:
+def prior_covariance(blocks: Sequence[JointPrior]) -> Floats:
     """Prior covariance (P, P): blocks are independent of one another."""
     from scipy.linalg import block_diag
 
     return np.asarray(block_diag(*(block.moments()[1] for block in blocks)), dtype=float)
 
 
-def prior_draws(blocks: Sequence[Block], count: int, seed: np.random.SeedSequence) -> Floats:
+def prior_draws(blocks: Sequence[JointPrior], count: int, seed: np.random.SeedSequence) -> Floats:
     """Scrambled Sobol draws through the prior laws: (count, P) coordinates.
 
     Source: Owen (1998) scrambling as implemented in scipy.stats.qmc.
@@ -135,7 +135,7 @@ def prior_draws(blocks: Sequence[Block], count: int, seed: np.random.SeedSequenc
     return np.concatenate(columns, axis=-1)
 
 
-def prior_belief(target: str, blocks: Sequence[Block], count: int, seed: np.random.SeedSequence) -> Belief:
+def prior_belief(target: str, blocks: Sequence[JointPrior], count: int, seed: np.random.SeedSequence) -> Belief:
     """Return the belief before any epoch."""
     draws = prior_draws(blocks, count, seed)
     weights = np.full(count, 1.0 / count)

@@ -25,7 +25,7 @@ from planner.units import YEAR_DAYS, date_of_mjd
 
 
 @dataclass(frozen=True)
-class Block:
+class Hindrance:
     """Why one feature is not measurable: share of the draws and moments that it stops, (B, T)."""
 
     feature: str
@@ -41,7 +41,7 @@ class LookErrors:
     sigma: Floats  # (B, T, M) along the rotated axes, inf where nothing is measured; (B, T, 0) if not asked for
     measurable: Bools  # (B, T, F)
     snr: Floats  # (B, T, F), 0 where it does not exist
-    blocked: tuple[Block, ...]
+    blocked: tuple[Hindrance, ...]
 
     def whiten(self, derivatives: Floats) -> Floats:
         """C^-1/2 J, (B, T, M, P); rows of what is not measured are zero."""
@@ -65,7 +65,7 @@ def camera_errors(
             sigma.append(np.full((*shape, len(feature.observables) if with_sigma else 0), np.inf))
             measurable.append(np.zeros(shape, bool))
             snr.append(np.zeros(shape))
-            blocked.append(Block(feature.name, "a camera does not resolve it", np.ones(shape, bool)))
+            blocked.append(Hindrance(feature.name, "a camera does not resolve it", np.ones(shape, bool)))
             continue
         if isinstance(feature, RingModel):
             one = ring_errors(model, feature, theta, mjd, setup, sky, seconds, name, with_sigma=with_sigma)
@@ -74,7 +74,7 @@ def camera_errors(
         sigma.append(one[0] if with_sigma else np.zeros((*shape, 0)))
         measurable.append(one[1])
         snr.append(one[2])
-        blocked += [Block(feature.name, reason, mask) for reason, mask in one[3].items()]
+        blocked += [Hindrance(feature.name, reason, mask) for reason, mask in one[3].items()]
     from scipy.linalg import block_diag
 
     return LookErrors(
@@ -129,7 +129,7 @@ def array_errors(
             sigma.append(np.full((*shape, len(feature.observables) if with_sigma else 0), np.inf))
             measurable.append(np.zeros(shape, bool))
             snr.append(np.zeros(shape))
-            blocked.append(Block(feature.name, "an array does not see it", np.ones(shape, bool)))
+            blocked.append(Hindrance(feature.name, "an array does not see it", np.ones(shape, bool)))
             axes.append(np.eye(len(feature.observables)))
             continue
         own = spots[feature.name]
@@ -138,7 +138,7 @@ def array_errors(
         sigma.append(np.concatenate([e[0] for e in each], axis=-1))
         measurable.append(each[0][1])
         snr.append(each[0][2])
-        blocked += [Block(feature.name, reason, mask) for reason, mask in each[0][3].items()]
+        blocked += [Hindrance(feature.name, reason, mask) for reason, mask in each[0][3].items()]
         axes += [beam_axes] * len(own)
     from scipy.linalg import block_diag
 

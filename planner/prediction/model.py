@@ -16,7 +16,15 @@ from planner.campaign.records import Arclet, Campaign, Knot, Pair, Ring, SetupRe
 from planner.errors import InputError
 from planner.prediction.arclets import ArcletModel, build_arclet
 from planner.prediction.build_jets import build_jets
-from planner.prediction.coordinates import Block, Layout, Number, named_seed, prior_belief, prior_covariance, standard
+from planner.prediction.coordinates import (
+    JointPrior,
+    Layout,
+    Number,
+    named_seed,
+    prior_belief,
+    prior_covariance,
+    standard,
+)
 from planner.prediction.knots import KnotModel, PairModel, Wander
 from planner.prediction.rings import RingModel, SetupNuisance, build_ring
 from planner.records import Belief, Floats, Ints
@@ -34,7 +42,7 @@ class TargetModel:
     """A target's features and the coordinates they share."""
 
     target: Target
-    blocks: tuple[Block, ...]
+    blocks: tuple[JointPrior, ...]
     features: tuple[FeatureModel, ...]
     wander: Wander | None
     distance: Number | None

@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 from rich.console import Console
 
 from planner.cli import codes, show
-from planner.errors import DomainError, InputError, LightlagError, Place, PlanningError, RecountError, TooLarge
+from planner.errors import DomainError, InputError, LightlagError, Place, PlanningError, RecountError
 from planner.report.tables import TextTable
 
 COLUMNS = ("look", "night", "setup, mode", "odds")
@@ -89,7 +89,6 @@ def test_lists_hang_their_later_lines() -> None:
     [
         (InputError("bad", place=Place("a.yaml", 3)), 2),
         (DomainError("beta", 2, "below 1"), 2),
-        (TooLarge("9 GB"), 2),
         (PermissionError(13, "Permission denied", "/x/plan.csv"), 2),
         (PlanningError("no plan"), 3),
         (RecountError(["look 1 starts in daylight"]), 3),
